@@ -1,0 +1,135 @@
+"""Quantities as joint draws, their summaries, and numbers as the GUM writes them.
+
+GUM Supplement 1 (JCGM 101:2008) propagates distributions by Monte Carlo: a quantity is an array of draws.
+Row ``i`` of every quantity of one measurement belongs to the same state of the world, so that whatever
+depends on one scale, one pointing or one axis stays correlated without a further line of code.
+"""
+
+from __future__ import annotations
+
+import math
+from dataclasses import dataclass
+from typing import TypedDict
+
+import numpy as np
+from numpy.typing import NDArray
+
+Floats = NDArray[np.float64]
+
+SIGNIFICANT = 6
+COVERAGE = (2.5, 97.5)
+
+
+class QuantityJson(TypedDict):
+    """A quantity in the results; a one-sided bound has no value, no sd and one of low, high."""
+
+    value: float | None
+    sd: float | None
+    low: float | None
+    high: float | None
+    unit: str
+
+
+@dataclass(frozen=True)
+class Summary:
+    """Median, standard deviation and 95 % coverage interval of a quantity.
+
+    A one-sided bound (``at least``) has ``value`` and ``sd`` None and one of ``low``, ``high``.
+    """
+
+    value: float | None
+    sd: float | None
+    low: float | None
+    high: float | None
+    unit: str
+
+    def to_json(self) -> QuantityJson:
+        """Return the summary to six significant digits."""
+        value, sd, low, high = (
+            None if number is None else significant(number)
+            for number in (self.value, self.sd, self.low, self.high)
+        )
+        return {"value": value, "sd": sd, "low": low, "high": high, "unit": self.unit}
+
+
+@dataclass(frozen=True, eq=False)
+class Quantity:
+    """A unit and N joint draws.
+
+    Parameters
+    ----------
+    unit
+        ``"mm"``, ``"mm2"``, ``"deg"``, ``"mm/px"``, ``"sign widths"``, ``"1"`` …
+    draws
+        Shape (N,), finite.
+
+    Raises
+    ------
+    ValueError
+        If the draws are not a non-empty one-dimensional array of finite numbers.
+
+    Examples
+    --------
+    >>> Quantity("mm", np.array([1.0, 2.0, 3.0])).summary().value
+    2.0
+    """
+
+    unit: str
+    draws: Floats
+
+    def __post_init__(self) -> None:
+        if self.draws.ndim != 1 or len(self.draws) == 0:
+            message = f"needs draws of shape (N,), has {self.draws.shape!r}"
+            raise ValueError(message)
+        if not np.isfinite(self.draws).all():
+            message = f"needs finite draws, has {int((~np.isfinite(self.draws)).sum())} that are not"
+            raise ValueError(message)
+
+    def summary(self) -> Summary:
+        """Return median, standard deviation and the 95 % interval (equal tails)."""
+        low, value, high = np.percentile(self.draws, (COVERAGE[0], 50.0, COVERAGE[1]))
+        sd = self.draws.std(ddof=1) if len(self.draws) > 1 else 0.0
+        return Summary(float(value), float(sd), float(low), float(high), self.unit)
+
+
+def significant(number: float, digits: int = SIGNIFICANT) -> float:
+    """Round a number to so many significant digits.
+
+    Examples
+    --------
+    >>> significant(41.3812345)
+    41.3812
+    >>> significant(0.0)
+    0.0
+    """
+    return float(f"{number:.{digits - 1}e}")
+
+
+def decimals_of(sd: float) -> int:
+    """Return how many decimals show two digits of a standard uncertainty (GUM 7.2.6)."""
+    return 1 - int(f"{sd:.1e}".split("e")[1])
+
+
+def concise(value: float, sd: float) -> str:
+    """Write a value with two digits of its standard uncertainty in brackets (GUM 7.2.2).
+
+    Examples
+    --------
+    >>> concise(41.378, 0.2231)
+    '41.38(22)'
+    >>> concise(1234.0, 56.0)
+    '1234(56)'
+    >>> concise(98765.0, 4321.0)
+    '98800(4300)'
+    >>> concise(3.0, 0.0)
+    '3'
+    """
+    if sd == 0 or not math.isfinite(sd):
+        return f"{value:g}"
+    places = decimals_of(sd)
+    if places <= 0:
+        return f"{round(value, places):.0f}({round(sd, places):.0f})"
+    digits = f"{sd * 10**places:.0f}"
+    # 1.0 mm and more: the decimal point stays in the bracket, so that 12.3(1.4) cannot be misread
+    bracket = digits if sd < 1 else f"{sd:.{places}f}"
+    return f"{value:.{places}f}({bracket})"
