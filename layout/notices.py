@@ -23,7 +23,7 @@ class Assumption:
 
 
 @dataclass(frozen=True)
-class Warn:
+class Caveat:
     """A caveat on a result: code and sentence."""
 
     code: str
@@ -38,7 +38,7 @@ class Missing:
     text: str
 
 
-Notice = Assumption | Warn | Missing
+Notice = Assumption | Caveat | Missing
 
 
 def assume(code: str, about: str, **values: object) -> Assumption:
@@ -46,6 +46,6 @@ def assume(code: str, about: str, **values: object) -> Assumption:
     return Assumption(code, about, ASSUMPTIONS[code].format(**values))
 
 
-def warn(code: str, **values: object) -> Warn:
+def warn(code: str, **values: object) -> Caveat:
     """Return the warning registered under ``code``; a KeyError is a fault of this program."""
-    return Warn(code, WARNINGS[code].format(**values))
+    return Caveat(code, WARNINGS[code].format(**values))
