@@ -7,33 +7,44 @@ empty tuple then says that nobody gave it, and whoever needs it assumes a value 
 Points are in pixels of the upright photograph, ``(x, y)``; lengths in mm; ``sd`` is a standard uncertainty.
 """
 
-from __future__ import annotations
+from typing import Annotated, Any, Literal
 
-from typing import Annotated, Literal
-
-from pydantic import BaseModel, BeforeValidator, ConfigDict, Field
+from pydantic import BaseModel, ConfigDict, Field, PlainValidator
 
 SCHEMA = 1
 TABLET_EDGE = "edge"
 """What ``Entry.column`` holds where the column begins at the tablet's edge, in place of a ruling's id."""
 
 
-def _check_reading(value: object) -> object:
-    """Refuse a mark's reading that is neither one number nor two, in words that fit both."""
-    if isinstance(value, bool) or not isinstance(value, (int, float, list, tuple)):
-        message = f"needs a number of mm along a bar, or [X, Y] on a flat target, has {value!r}"
-        raise ValueError(message)
-    return value
+LARGEST = 1e6
+SMALLEST = 1e-6
+"""No length, pixel or percentage is larger, nothing that is divided by is smaller: what lies beyond is a slip
+of the keyboard, and would overflow where it is squared."""
 
 
-Number = Annotated[float, Field(strict=True, allow_inf_nan=False)]
-Positive = Annotated[float, Field(strict=True, allow_inf_nan=False, gt=0)]
-NotNegative = Annotated[float, Field(strict=True, allow_inf_nan=False, ge=0)]
-Count = Annotated[int, Field(strict=True, ge=1)]
+def _is_length(value: object) -> bool:
+    """Say whether a value is a number in range; ``True`` is not a number."""
+    return isinstance(value, (int, float)) and not isinstance(value, bool) and abs(value) <= LARGEST
+
+
+def _read_mark(value: Any) -> float | tuple[float, float]:  # noqa: ANN401 - whatever stands in the file
+    """Return a mark's reading: one check for both forms, since a union of types would report two faults."""
+    if _is_length(value):
+        return float(value)
+    if isinstance(value, (list, tuple)) and len(value) == 2 and all(_is_length(each) for each in value):
+        return float(value[0]), float(value[1])
+    message = f"needs a number of mm along a bar, or [X, Y] on a flat target, up to {LARGEST:.0f}"
+    raise ValueError(message)
+
+
+Number = Annotated[float, Field(strict=True, allow_inf_nan=False, ge=-LARGEST, le=LARGEST)]
+Positive = Annotated[float, Field(strict=True, allow_inf_nan=False, ge=SMALLEST, le=LARGEST)]
+NotNegative = Annotated[float, Field(strict=True, allow_inf_nan=False, ge=0, le=LARGEST)]
+Count = Annotated[int, Field(strict=True, ge=1, le=1_000_000)]
 Index = Annotated[int, Field(strict=True, ge=0)]
 Point = tuple[Number, Number]
 Points = tuple[Point, ...]
-Reading = Annotated[Number | Point, BeforeValidator(_check_reading)]
+Reading = Annotated[float | tuple[float, float], PlainValidator(_read_mark)]
 Name = Annotated[str, Field(strict=True, min_length=1)]
 Text = Annotated[str, Field(strict=True)]
 Sha256 = Annotated[str, Field(strict=True, pattern=r"^[0-9a-f]{64}$")]
@@ -144,7 +155,7 @@ class View(_Part):
     photograph: Name
     region: tuple[Number, Number, Positive, Positive] | None = None
     pointing_px: Positive | None = None
-    scale: Scale = Scale()
+    scale: Scale = Field(default_factory=Scale)
     outline: tuple[OutlinePiece, ...] = ()
     rulings: tuple[Ruling, ...] = ()
     writing: tuple[Entry, ...] = ()
@@ -212,16 +223,16 @@ class Record(_Part):
     observer: Text = ""
     date: Text = ""
     findspot: Text = ""
-    photographs: Annotated[tuple[Photograph, ...], Field(min_length=1)]
-    views: Annotated[tuple[View, ...], Field(min_length=1)]
+    photographs: tuple[Photograph, ...]
+    views: tuple[View, ...]
     thickness: Measured | None = None
     convexity: Measured | None = None
     asymmetry_percent: NotNegative | None = None
     evidence: tuple[Evidence, ...] = ()
-    lost: Lost = Lost()
+    lost: Lost = Field(default_factory=Lost)
     series: dict[Name, tuple[Text, ...]] = {}
     candidates: tuple[Candidate, ...] = ()
-    pool: Pool = Pool()
+    pool: Pool = Field(default_factory=Pool)
     gaps: tuple[Gap, ...] = ()
 
     def photograph_of(self, view: View) -> Photograph:
