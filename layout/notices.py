@@ -8,9 +8,40 @@ from __future__ import annotations
 
 from dataclasses import dataclass
 
-ASSUMPTIONS: dict[str, str] = {}
+ASSUMPTIONS: dict[str, str] = {
+    "scale.pointing": "a traced point is taken to be good to {px:g} px (standard uncertainty)",
+    "scale.thickness": "the thickness was not given: {mm:g} mm with a standard uncertainty of {sd:g} mm",
+    "scale.below_face": "how far the bar lies below the face was not given: {mm:.1f} mm with a standard "
+    "uncertainty of {sd:.1f} mm, anywhere from the table to the face",
+    "scale.distance": "the distance of the lens was not given: about {mm:g} mm, from half to twice that",
+    "scale.tilt": "how square the camera stood to the face was not given: {deg:g} degrees about each axis "
+    "(standard uncertainty)",
+    "scale.ppi": "the stated resolution is taken to be good to {percent:g} % (standard uncertainty)",
+    "scale.unit": "without a scale the shape's priors take the fragment to be 90 mm across",
+    "signs.full_of_pitch": "no entry is measured: a full digit is taken to be {share:g} line pitches wide, give or "
+    "take {percent:g} % (common practice)",
+    "signs.full": "neither an entry nor a line pitch is measured: a full digit is taken to be {mm:g} mm wide, "
+    "give or take {percent:g} % (common practice)",
+    "signs.ratios": "no measured entry holds these kinds of sign; their widths in full digits are assumed: {kinds}",
+    "signs.stretch": "each entry is taken to be stretched or squeezed by about 11 %, its signs to scatter by up to "
+    "20 %, as far as the measured entries do not tell otherwise",
+    "clearance.none": "no column survives with entries: columns are taken to be {typical:g} times as wide as "
+    "their widest entry, give or take {percent:g} %",
+    "clearance.few": "surviving columns with entries: {columns}; what they say is joined to an expected clearance of "
+    "{typical:g}, give or take {percent:g} %, and to a spread between columns of about {spread:g} %",
+    "clearance.widest": "the widest recorded entry of a surviving column is taken to be the widest that it held",
+    "ranking.none": "'none of these' stands for contents that may need any width from one full digit to the "
+    "tablet's own, each doubling equally likely; it starts as likely as each candidate",
+}
 
-WARNINGS: dict[str, str] = {}
+WARNINGS: dict[str, str] = {
+    "scale.disagree": "the sources of scale contradict one another ({sources}): their errors were enlarged "
+    "{ratio} times; check the readings of the marks",
+    "outline.crossing": "views[{view}]: outline[{first}] crosses outline[{second}] within a few pixels of "
+    "({x}, {y}); what stands out is cut off for the measurement and kept in the record.",
+    "signs.efficiency": "the widths of signs rest on few effective draws ({percent} % of all): the measured "
+    "entries disagree with what is usual; check their texts and ends",
+}
 
 
 @dataclass(frozen=True)
