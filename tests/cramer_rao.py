@@ -16,8 +16,8 @@ from tests.simulation.wobble import around
 
 Floats = NDArray[np.float64]
 
-# centre x and y, log half-width to the right, log half-height, turn, log exponent above and below,
-# left half over right half, less one
+# Parameters: centre x and y, log half-width to the right, log half-height, turn, log exponent above and
+# below, left half over right half less one. The halves above and below are taken as known.
 STEP = 1e-5
 UNEQUAL_SD = 0.01
 LOG_EXPONENT_SD = 0.5
@@ -44,27 +44,30 @@ def cramer_rao_width(simulated: Simulated, *, shape_priors: bool = True) -> floa
     if edge.outline.exponents is None:
         message = f"needs a superellipse, has {simulated.truth['family']!r}"
         raise ValueError(message)
-    left, right, above, below = edge.outline.halves
-    truth = np.array(
-        [
-            0.0,
-            0.0,
-            np.log(right),
-            np.log((above + below) / 2),
-            0.0,
-            *np.log(edge.outline.exponents),
-            left / right - 1,
-        ]
-    )
-    jacobian = normal_displacements(edge, truth, above / below)
+    truth, unequal_height = true_parameters(edge)
+    jacobian = normal_displacements(edge, truth, unequal_height)
     information = jacobian.T @ np.linalg.solve(covariance(edge), jacobian)
     information[7, 7] += UNEQUAL_SD**-2
     if shape_priors:
         information[[5, 6], [5, 6]] += LOG_EXPONENT_SD**-2
         aspect = np.array([0, 0, 1.0, -1.0, 0, 0, 0, 1 / (2 + truth[7])])
         information += np.outer(aspect, aspect) / LOG_ASPECT_SD**2
-    width = np.array([0, 0, left + right, 0, 0, 0, 0, right])
+    width = np.array([0, 0, width_of(truth), 0, 0, 0, 0, np.exp(truth[2])])
     return float(np.sqrt(width @ np.linalg.solve(information, width)))
+
+
+def true_parameters(edge: TracedEdge) -> tuple[Floats, float]:
+    """Return the true parameters, shape (8,), and the half above over the half below."""
+    left, right, above, below = edge.outline.halves
+    assert edge.outline.exponents is not None
+    logarithms = np.log([right, (above + below) / 2])
+    truth = np.array([0.0, 0.0, *logarithms, 0.0, *np.log(edge.outline.exponents), left / right - 1])
+    return truth, above / below
+
+
+def width_of(parameters: Floats) -> float:
+    """Return the width between tangents, mm."""
+    return float(np.exp(parameters[2]) * (2 + parameters[7]))
 
 
 def covariance(edge: TracedEdge) -> Floats:

@@ -29,6 +29,8 @@ class TracedEdge:
     ----------
     arc, points, normals
         Arc length from the middle of the left side, mm; the places on the smooth outline, shape (P, 2).
+    displacement
+        How far the edge and the hand lie outside the smooth outline, mm; pointing comes on top.
     wobble
         Kind, sd and correlation length of the edge's wobble, mm.
     tremor, pointing
@@ -39,6 +41,7 @@ class TracedEdge:
     arc: Floats
     points: Floats
     normals: Floats
+    displacement: Floats
     wobble: tuple[str, float, float]
     tremor: float
     pointing: float
@@ -78,7 +81,8 @@ def simulate(rng: np.random.Generator, **settings: object) -> Simulated:
     count = len(outline.points)
     wobble = sd * sample_around(rng, kind, length, outline.perimeter, count)
     tremor = wanted.tremor * sample_around(rng, TREMOR_KIND, TREMOR_LENGTH, outline.perimeter, count)
-    rough = outline.points + (wobble + tremor)[:, None] * outline.normals
+    displacement = wobble + tremor
+    rough = outline.points + displacement[:, None] * outline.normals
     broken = break_off(rng, outline, rough, lost, corner_lost=wanted.corner_lost)
     index = np.unique(np.concatenate([piece.index for piece in broken if piece.index is not None]))
     edge = TracedEdge(
@@ -86,6 +90,7 @@ def simulate(rng: np.random.Generator, **settings: object) -> Simulated:
         outline.arc[index],
         outline.points[index],
         outline.normals[index],
+        displacement[index],
         (kind, sd, length),
         wanted.tremor,
         wanted.pointing_px / px_per_mm,

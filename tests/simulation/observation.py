@@ -178,6 +178,7 @@ def truth_of(tablet: Tablet, scene: Scene, verticals: list[Line]) -> Json:
         "height": above + below,
         "margin": tablet.margin,
         "lost_space": tablet.lost_space,
+        "entries": len(tablet.entries),
         "sign_width": tablet.hand.full,
         "capacity": tablet.lost_space / tablet.hand.full,
         "area": area,
