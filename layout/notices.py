@@ -18,18 +18,21 @@ ASSUMPTIONS: dict[str, str] = {
     "(standard uncertainty)",
     "scale.ppi": "the stated resolution is taken to be good to {percent:g} % (standard uncertainty)",
     "scale.unit": "without a scale the shape's priors take the fragment to be 90 mm across",
-    "signs.full_of_pitch": "no entry is measured: a full digit is taken to be {share:g} line pitches wide, give or "
-    "take {percent:g} % (common practice)",
-    "signs.full": "neither an entry nor a line pitch is measured: a full digit is taken to be {mm:g} mm wide, "
+    "signs.full_of_pitch": "no entry is measured: a full digit is taken to be {share:g} line pitches wide, "
     "give or take {percent:g} % (common practice)",
-    "signs.ratios": "no measured entry holds these kinds of sign; their widths in full digits are assumed: {kinds}",
-    "signs.stretch": "each entry is taken to be stretched or squeezed by about 11 %, its signs to scatter by up to "
-    "20 %, as far as the measured entries do not tell otherwise",
+    "signs.full": "neither an entry nor a line pitch is measured: a full digit is taken to be {mm:g} mm "
+    "wide, give or take {percent:g} % (common practice)",
+    "signs.ratios": "no measured entry holds these kinds of sign; their widths in full digits are assumed: "
+    "{kinds}",
+    "signs.stretch": "each entry is taken to be stretched or squeezed by about 11 %, its signs to scatter by "
+    "up to 20 %, as far as the measured entries do not tell otherwise",
     "clearance.none": "no column survives with entries: columns are taken to be {typical:g} times as wide as "
     "their widest entry, give or take {percent:g} %",
-    "clearance.few": "surviving columns with entries: {columns}; what they say is joined to an expected clearance of "
-    "{typical:g}, give or take {percent:g} %, and to a spread between columns of about {spread:g} %",
-    "clearance.widest": "the widest recorded entry of a surviving column is taken to be the widest that it held",
+    "clearance.few": "surviving columns with entries: {columns}; what they say is joined to an expected "
+    "clearance of {typical:g}, give or take {percent:g} %, and to a spread between columns of about "
+    "{spread:g} %",
+    "clearance.widest": "the widest recorded entry of a surviving column is taken to be the widest that it "
+    "held",
     "ranking.none": "'none of these' stands for contents that may need any width from one full digit to the "
     "tablet's own, each doubling equally likely; it starts as likely as each candidate",
 }
