@@ -125,6 +125,7 @@ def results(draws: int = 400, name: str = "Tell Amat 12") -> Results:
         ),
     )
     outline_px = superellipse_px()
+    lost_space = near(46.1, 1.3, "mm")
     return Results(
         schema=1,
         name=name,
@@ -159,8 +160,8 @@ def results(draws: int = 400, name: str = "Tell Amat 12") -> Results:
             height=near(76.0, 0.8, "mm"),
             area=near(7100.0, 120.0, "mm2"),
             lost_area=near(2400.0, 110.0, "mm2"),
-            lost_space=near(46.1, 1.3, "mm"),
-            lost_space_by_side={"left": near(46.1, 1.3, "mm")},
+            lost_space=lost_space,
+            lost_space_by_side={"left": lost_space},
             margin=near(0.0, 0.0, "mm"),
         ),
         sign_width=SignWidthResult(

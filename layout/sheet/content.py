@@ -128,7 +128,8 @@ def _summary(results: Results) -> tuple[str, ...]:
         survives = next((view.preserved for view in results.views if view.face == whole.face), None)
         kept = "" if survives is None else f", of which {_say(survives.width)} survive"
         sentences.append(
-            f"The tablet is inferred to have been {_say(whole.width)} wide{kept}, and {_say(whole.height)} high."
+            f"The tablet is inferred to have been {_say(whole.width)} wide{kept}, "
+            f"and {_say(whole.height)} high."
         )
         for side, space in whole.lost_space_by_side.items():
             sentences.append(f"On the {side} {_say(space)} of writing surface are lost.")
@@ -205,8 +206,11 @@ def _whole(whole: Reconstructed | None) -> Section:
         ("height", whole.height.summary()),
         ("area", whole.area.summary()),
         ("lost area", whole.lost_area.summary()),
-        *((f"lost space, {side}", space.summary()) for side, space in whole.lost_space_by_side.items()),
     ]
+    if whole.lost_space is not None:
+        rows.append(("lost space", whole.lost_space.summary()))
+    if len(whole.lost_space_by_side) > 1:
+        rows += [(f"lost on the {side}", space.summary()) for side, space in whole.lost_space_by_side.items()]
     if whole.margin is not None:
         rows.append(("margin", whole.margin.summary()))
     axes = (("vertical", whole.axis.vertical), ("horizontal", whole.axis.horizontal))

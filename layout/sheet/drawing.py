@@ -49,11 +49,13 @@ class ScaleBar:
 
 @dataclass(frozen=True)
 class Drawing:
-    """Paths in pixels; ``stroke_px`` is what a thin line measures in them, ``width_mm`` the drawing's width.
+    """The drawing: paths in pixels of the photograph with the id ``photograph``.
 
-    ``surviving`` is empty while the outline is open; ``whole`` and ``band`` while nothing is inferred.
+    ``stroke_px`` is what a thin line measures in them, ``width_mm`` the drawing's width. ``surviving`` is
+    empty while the outline is open, ``whole`` and ``band`` while nothing is inferred.
     """
 
+    photograph: str
     box: Box
     width_mm: float | None
     stroke_px: float
@@ -80,6 +82,7 @@ def draw(record: Record, results: Results) -> Drawing | None:
     box = Box(content.x, content.y, content.width, content.height + (30 * stroke_px if bar else 0))
     contour = [point for piece in view.outline for point in piece.points]
     return Drawing(
+        photograph=view.photograph,
         box=box,
         width_mm=None if mm_per_px is None else box.width * mm_per_px,
         stroke_px=stroke_px,
@@ -104,7 +107,8 @@ def _drawn_view(record: Record, results: Results) -> int | None:
 
 def _traced(view: View) -> list[tuple[float, float]]:
     """Return every traced point of the fragment itself."""
-    return [point for part in (*view.outline, *view.rulings) for point in part.points]
+    traces = [*(piece.points for piece in view.outline), *(ruling.points for ruling in view.rulings)]
+    return [point for points in traces for point in points]
 
 
 def _edges(view: View) -> tuple[Stroke, ...]:

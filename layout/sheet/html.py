@@ -8,12 +8,13 @@ from layout.quantity import Summary
 from layout.sheet.content import Cell, Content, Table
 from layout.sheet.drawing import Drawing
 from layout.sheet.numbers import NO_NUMBER, interval, number, shown
+from layout.sheet.picture import Embedded
 
 WIDE = 4
 """A table of so many columns becomes a stack of cards on a narrow screen."""
 
 
-def to_html(content: Content, drawing: Drawing | None, photograph: str | None) -> str:
+def to_html(content: Content, drawing: Drawing | None, photograph: Embedded | None) -> str:
     """Set the sheet as HTML.
 
     Parameters
@@ -23,7 +24,7 @@ def to_html(content: Content, drawing: Drawing | None, photograph: str | None) -
     drawing
         The drawing, or None where nothing is traced.
     photograph
-        The drawing's part of the photograph as a ``data:`` address, or None.
+        The drawing's part of the photograph, or None.
     """
     environment = Environment(
         loader=PackageLoader("layout.sheet"),

@@ -75,11 +75,11 @@ def _printed(summary: Summary) -> Summary:
     """Return the summary in the unit that is printed: areas in square centimetres."""
     if summary.unit != "mm2":
         return summary
-    parts = (
+    value, sd, low, high = (
         None if part is None else part / MM2_PER_CM2
         for part in (summary.value, summary.sd, summary.low, summary.high)
     )
-    return Summary(*parts, unit="cm²")
+    return Summary(value, sd, low, high, "cm²")
 
 
 def _bound(summary: Summary) -> str:

@@ -49,19 +49,19 @@ def method(results: Results) -> tuple[str, ...]:
         (
             whole,
             "The surviving original edges are fitted with a superellipse about an unknown axis. A hand-made "
-            "edge wobbles: its departures are taken as correlated along the edge, with a Matérn covariance of "
-            "smoothness 5/2. The break's course is no evidence of the shape.",
+            "edge wobbles: its departures are taken as correlated along the edge, with a Matérn covariance "
+            "of smoothness 5/2. The break's course is no evidence of the shape.",
         ),
         (
             results.clearance is not None,
-            "Clearance, the width of a column over that of its widest entry, is taken as log-normal about this "
-            "scribe's typical one, learned from the columns that survive.",
+            "Clearance, the width of a column over that of its widest entry, is taken as log-normal about "
+            "this scribe's typical one, learned from the columns that survive.",
         ),
         (
             ranked,
-            "A candidate requires, column by column, the width of its widest entry; what is predicted adds each "
-            "column's clearance. It is too wide where the prediction exceeds the capacity in more than 95 % of "
-            "the draws, too narrow where it does so in fewer than 5 %.",
+            "A candidate requires, column by column, the width of its widest entry; what is predicted adds "
+            "each column's clearance. It is too wide where the prediction exceeds the capacity in more than "
+            "95 % of the draws, too narrow where it does so in fewer than 5 %.",
         ),
     )
     return tuple(text for used, text in steps if used)

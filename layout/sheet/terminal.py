@@ -11,6 +11,7 @@ from rich.padding import Padding
 from rich.table import Table as RichTable
 from rich.text import Text
 
+from layout.console import printable
 from layout.quantity import Summary
 from layout.sheet.content import Cell, Content, Section, Table
 from layout.sheet.numbers import NO_NUMBER, interval, number, shown
@@ -45,19 +46,6 @@ def to_text(content: Content, sections: tuple[str, ...]) -> str:
             console.print()
             console.print(_section(section))
     return "\n".join(line.rstrip() for line in out.getvalue().splitlines()) + "\n"
-
-
-def printable(text: str) -> str:
-    """Return a text on one line, without what a terminal would obey: control characters are spelt out.
-
-    Examples
-    --------
-    >>> printable("a\\x1b[31mb")
-    'a\\\\x1b[31mb'
-    """
-    return "".join(
-        char if char.isprintable() else char.encode("unicode_escape").decode("ascii") for char in text
-    )
 
 
 def _section(section: Section) -> Group:
