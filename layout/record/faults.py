@@ -16,7 +16,10 @@ LONGEST = 40
 
 def shown(value: object) -> str:
     """Return a value as the file writes it, cut where it is long."""
-    text = json.dumps(value, ensure_ascii=False, default=repr)
+    text = json.dumps(value, ensure_ascii=False)
+    if not text.isprintable():
+        # control characters and halves of characters, which no terminal should be sent
+        text = json.dumps(value)
     return text if len(text) <= LONGEST else f"{text[:LONGEST]}…"
 
 
@@ -37,7 +40,7 @@ def place_of(steps: tuple[Step, ...]) -> str:
         elif step.isidentifier():
             place += f".{step}" if place else step
         else:
-            place += f"[{json.dumps(step[:40], ensure_ascii=False)}]"
+            place += f"[{shown(step)}]"
     return place
 
 
