@@ -25,7 +25,8 @@ source."""
 SPREAD_SCALE = 0.15
 """Scale of the half-normal prior of the spread (sd of the logarithm) from column to column."""
 
-SPREADS = np.geomspace(0.01, 0.75, 30)
+SPREADS = np.geomspace(0.003, 0.75, 36)
+"""Grid of the spread: the half-normal prior leaves 1.6 % below it."""
 
 
 @dataclass(frozen=True, eq=False)
@@ -52,7 +53,8 @@ class Clearance:
     @property
     def typical(self) -> Floats:
         """Typical clearance, shape (N,)."""
-        return np.exp(self.mu)
+        typical: Floats = np.exp(self.mu)
+        return typical
 
     def of_new_column(self, normal: Floats) -> Floats:
         """Return the clearance of a column of which nothing survives.
@@ -63,7 +65,8 @@ class Clearance:
             Standard normal draws, shape (N,) or (N, columns): which column it is, not which scribe.
         """
         mu, tau = (part.reshape(-1, *[1] * (normal.ndim - 1)) for part in (self.mu, self.tau))
-        return np.exp(mu + tau * normal)
+        clearance: Floats = np.exp(mu + tau * normal)
+        return clearance
 
 
 def find_widest(entries: Sequence[SignCounts], widths: SignWidths) -> Floats:
@@ -94,9 +97,9 @@ def _undominated(counts: Floats) -> Floats:
 def learn_clearance(column_widths: Floats, widest: Floats, rng: np.random.Generator) -> Clearance:
     """Draw the scribe's clearance from its posterior, given each row's widths.
 
-    Given ``tau``, ``mu`` is normal in closed form; the marginal of ``tau`` is taken on a grid, row by row. The
-    widest entry that was recorded is taken for the widest that the column held; where many lines are lost, that
-    makes the clearance too large.
+    Given ``tau``, ``mu`` is normal in closed form; the marginal of ``tau`` is taken on a grid, row by row.
+    The widest entry that was recorded is taken for the widest that the column held; where many lines are
+    lost, that makes the clearance too large.
 
     Parameters
     ----------
@@ -150,8 +153,9 @@ def _draw_spread(log_ratios: Floats, rng: np.random.Generator) -> Floats:
     level = rng.random((rows, 1)) * cumulated[:, -1:]
     node = np.minimum((cumulated < level).sum(axis=1), len(SPREADS) - 1)
     step = np.log(SPREADS[1] / SPREADS[0])
-    # even within the node's cell, so that the spread is a number and not a choice of thirty
-    return SPREADS[node] * np.exp(step * (rng.random(rows) - 0.5))
+    # even within the node's cell, so that the spread is a number and not one of a list
+    tau: Floats = SPREADS[node] * np.exp(step * (rng.random(rows) - 0.5))
+    return tau
 
 
 def _notices(columns: int) -> tuple[Assumption, ...]:
@@ -159,8 +163,7 @@ def _notices(columns: int) -> tuple[Assumption, ...]:
     percent = 100 * TYPICAL_SD_LOG
     if not columns:
         return (assume("clearance.none", "writing", typical=TYPICAL, percent=percent),)
-    spread = 100 * SPREAD_SCALE * 0.6745
-    few = assume(
-        "clearance.few", "writing", columns=columns, typical=TYPICAL, percent=percent, spread=f"{spread:.0f}"
-    )
+    # the median of a half-normal distribution
+    spread = round(100 * 0.6745 * SPREAD_SCALE)
+    few = assume("clearance.few", "writing", columns=columns, typical=TYPICAL, percent=percent, spread=spread)
     return (few, assume("clearance.widest", "writing"))
