@@ -16,7 +16,7 @@ import typer
 from layout import __version__
 from layout.console import hush, say, speak_utf8, waiting
 from layout.errors import CallError, LayoutError
-from layout.files import replace_file
+from layout.files import reason, replace_file
 
 if TYPE_CHECKING:
     from layout.record.model import Record
@@ -53,7 +53,7 @@ def main(arguments: list[str] | None = None) -> int:
     except OSError as error:
         if error.filename is None:
             hush()
-        return _refuse([f"{error.filename or 'stdout'}: {error.strerror or error}"])
+        return _refuse([f"{error.filename or 'stdout'}: {reason(error)}"])
     if code == INTERRUPTED:
         say("interrupted; nothing was left half written")
     return code or 0
@@ -90,7 +90,7 @@ def demo(
     record, results = _measured(path, DRAWS, SEED)
     written = [folder / f"sheet{form}" for form in FORMS]
     for file in written:
-        replace_file(file, sheet(file.suffix, record, results, path))
+        _write(file, sheet(file.suffix, record, results, path))
     sys.stdout.write(to_text(content_of(record, results, path), IN_SHORT))
     sys.stdout.write("\n" + "".join(f"{file}\n" for file in (path, *written)))
 
@@ -184,7 +184,7 @@ def sheet(
         raise CallError(message, file=file)
     read, results = _measured(record, DRAWS, SEED)
     with waiting("setting the sheet"):
-        replace_file(file, sheet(form, read, results, record))
+        _write(file, sheet(form, read, results, record))
     say(f"{file}: written")
 
 
@@ -203,6 +203,15 @@ def _print(record: Record, results: Results, path: Path, sections: tuple[str, ..
     from layout.sheet.terminal import to_text
 
     sys.stdout.write(to_text(content_of(record, results, path), sections))
+
+
+def _write(file: Path, data: bytes) -> None:
+    """Write a file of results whole or not at all."""
+    try:
+        replace_file(file, data)
+    except OSError as error:
+        message = f"cannot be written: {reason(error)}"
+        raise CallError(message, file=file) from None
 
 
 def _refuse(lines: list[str]) -> int:

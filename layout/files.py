@@ -1,49 +1,61 @@
-"""Writing a file so that no crash at any moment leaves less than the last one that was saved."""
+"""Writing a file whole or not at all, and what to do when the system refuses."""
 
 from __future__ import annotations
 
 import contextlib
 import os
+import secrets
+import stat
 from pathlib import Path
 
-from layout.errors import CallError
 
-
-def replace_file(path: Path, content: bytes) -> None:
-    """Write a file whole or not at all: a temporary file in the same folder, synced, then renamed.
+def replace_file(path: Path, data: bytes) -> None:
+    """Write a temporary file beside the old one, sync it, and rename it over the old one.
 
     A link is followed, so that the file that it names is replaced and not the link.
 
     Raises
     ------
-    CallError
+    OSError
         If the file cannot be written; what was there before is then untouched.
     """
-    if path.is_dir():
-        message = "is a folder; name a file"
-        raise CallError(message, file=path)
-    target = Path(os.path.realpath(path))
-    temporary = target.with_name(f".{target.name}.{os.getpid()}")
+    path = path.resolve()
+    temporary = path.with_name(f".{path.name}.{secrets.token_hex(4)}.tmp")
     try:
-        with temporary.open("wb") as file:
-            file.write(content)
+        with temporary.open("xb") as file:
+            if path.exists():
+                os.chmod(file.fileno(), stat.S_IMODE(path.stat().st_mode))
+            file.write(data)
             file.flush()
             os.fsync(file.fileno())
-        temporary.replace(target)
-    except OSError as error:
-        message = f"cannot be written: {error.strerror or error}; choose another folder, or make room"
-        raise CallError(message, file=path) from error
-    finally:
+        os.replace(temporary, path)
+    except BaseException:
         with contextlib.suppress(OSError):
-            temporary.unlink(missing_ok=True)
-    _sync_folder(target.parent)
+            temporary.unlink()
+        raise
+    _sync_folder(path.parent)
+
+
+def reason(error: OSError | ValueError) -> str:
+    """Say why the system refused, and what to do."""
+    mends: dict[type[BaseException], str] = {
+        FileNotFoundError: "there is no such file or folder; check the name",
+        PermissionError: "permission denied; change the rights of the file or folder",
+        IsADirectoryError: "it is a folder; name a file",
+        NotADirectoryError: "a part of its path is no folder; check the name",
+        FileExistsError: "a folder or file is in the way; name another",
+    }
+    if type(error) in mends:
+        return mends[type(error)]
+    strerror = error.strerror if isinstance(error, OSError) else None
+    return f"{(strerror or str(error)).lower()}; name another file, or free space where the disk is full"
 
 
 def _sync_folder(folder: Path) -> None:
-    """Make the renaming itself last; a system that cannot sync a folder has its own way to."""
+    """Make the renaming last; some file systems cannot, and the file is whole there too."""
     with contextlib.suppress(OSError):
-        descriptor = os.open(folder, os.O_RDONLY)
+        handle = os.open(folder, os.O_RDONLY)
         try:
-            os.fsync(descriptor)
+            os.fsync(handle)
         finally:
-            os.close(descriptor)
+            os.close(handle)

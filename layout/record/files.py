@@ -2,11 +2,8 @@
 
 from __future__ import annotations
 
-import contextlib
 import json
-import os
 import re
-import secrets
 import stat
 from collections import Counter
 from collections.abc import Iterator
@@ -16,6 +13,7 @@ from typing import Any
 from pydantic import ValidationError
 
 from layout.errors import Fault, RecordError
+from layout.files import reason, replace_file
 from layout.record.consistency import inconsistencies
 from layout.record.faults import Step, faults_of, place_of, shown
 from layout.record.model import SCHEMA, Record
@@ -60,7 +58,7 @@ def read(path: str | Path) -> Record:
         with path.open("rb") as file:
             data = file.read(LARGEST_FILE + 1)
     except (OSError, ValueError) as error:
-        raise RecordError([Fault("", f"cannot be read: {_reason(error)}")], file=path) from None
+        raise RecordError([Fault("", f"cannot be read: {reason(error)}")], file=path) from None
     return parse(data, file=path)
 
 
@@ -113,9 +111,9 @@ def write(record: Record, path: str | Path) -> None:
     text = to_text(record)
     parse(text, file=path)
     try:
-        _replace(path.resolve(), text.encode())
+        replace_file(path, text.encode())
     except (OSError, ValueError) as error:
-        text = f"cannot be written: {_reason(error)}; the file is as it was"
+        text = f"cannot be written: {reason(error)}; the file is as it was"
         raise RecordError([Fault("", text)], file=path) from None
 
 
@@ -203,46 +201,3 @@ def _wrong_schema(values: dict[str, Any]) -> Iterator[Fault]:
     if schema != SCHEMA or isinstance(schema, bool):
         text = f"needs {SCHEMA}, has {shown(schema)}; update the program if the file is newer"
         yield Fault("schema", text)
-
-
-def _replace(path: Path, data: bytes) -> None:
-    """Write a temporary file beside the old one, sync it, and rename it over the old one."""
-    temporary = path.with_name(f".{path.name}.{secrets.token_hex(4)}.tmp")
-    try:
-        with temporary.open("xb") as file:
-            if path.exists():
-                os.chmod(file.fileno(), stat.S_IMODE(path.stat().st_mode))
-            file.write(data)
-            file.flush()
-            os.fsync(file.fileno())
-        os.replace(temporary, path)
-    except BaseException:
-        with contextlib.suppress(OSError):
-            temporary.unlink()
-        raise
-    _sync_folder(path.parent)
-
-
-def _sync_folder(folder: Path) -> None:
-    """Make the renaming last; some file systems cannot, and the record is whole there too."""
-    with contextlib.suppress(OSError):
-        handle = os.open(folder, os.O_RDONLY)
-        try:
-            os.fsync(handle)
-        finally:
-            os.close(handle)
-
-
-def _reason(error: OSError | ValueError) -> str:
-    """Say why the system refused, and what to do."""
-    mends: dict[type[BaseException], str] = {
-        FileNotFoundError: "there is no such file or folder; check the name",
-        PermissionError: "permission denied; change the rights of the file or folder",
-        IsADirectoryError: "it is a folder; name a file",
-        NotADirectoryError: "a part of its path is no folder; check the name",
-        FileExistsError: "a folder or file is in the way; name another",
-    }
-    if type(error) in mends:
-        return mends[type(error)]
-    strerror = error.strerror if isinstance(error, OSError) else None
-    return f"{(strerror or str(error)).lower()}; name another file, or free space where the disk is full"

@@ -8,6 +8,8 @@ from dataclasses import dataclass
 from pathlib import Path
 from typing import TYPE_CHECKING
 
+import numpy as np
+
 from layout.errors import PhotographError
 from layout.sheet.drawing import Box, Drawing
 
@@ -45,17 +47,18 @@ def embed(record: Record, drawing: Drawing, folder: Path) -> Embedded | None:
         if photograph.sha256 is None or sha256_of(path) != photograph.sha256:
             return None
         pixels = read_photograph(path)
-    except (PhotographError, OSError):
+    except PhotographError:
         return None
     height, width = pixels.shape[:2]
     left, right = _within(drawing.box.x, drawing.box.width, width)
     top, bottom = _within(drawing.box.y, drawing.box.height, height)
     if left >= right or top >= bottom:
         return None
-    part = pixels[top:bottom, left:right]
+    part = pixels[top:bottom, left:right, ::-1]
+    eight_bit = (part >> 8 if part.dtype == np.uint16 else part).astype(np.uint8)
     shrink = min(1.0, LONGEST_PX / max(part.shape[:2]))
     size = (max(1, round((right - left) * shrink)), max(1, round((bottom - top) * shrink)))
-    small = cv2.resize(part, size, interpolation=cv2.INTER_AREA)
+    small = cv2.resize(eight_bit, size, interpolation=cv2.INTER_AREA)
     _, encoded = cv2.imencode(".jpg", small, [cv2.IMWRITE_JPEG_QUALITY, JPEG_QUALITY])
     address = "data:image/jpeg;base64," + base64.b64encode(encoded.tobytes()).decode("ascii")
     # pixel centres are on whole numbers, so the picture's edge lies half a pixel outside
