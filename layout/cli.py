@@ -105,7 +105,8 @@ def new(
 
     It holds their sizes and hashes, and one view of the obverse on the first.
     """
-    from layout.record import begin, write
+    from layout.record.begin import begin
+    from layout.record.files import write
 
     if not record.name.endswith(RECORD_ENDING) or record.name == RECORD_ENDING:
         message = f"a record's name ends in {RECORD_ENDING}, as in q17{RECORD_ENDING}"
@@ -125,7 +126,8 @@ def check(record: RecordFile) -> int:
 
     Exit code 1 tells that something is: for which result, or that a photograph has changed.
     """
-    from layout.record import check, read
+    from layout.record.check import check
+    from layout.record.files import read
 
     with waiting("reading the photographs"):
         found = check(read(record), record.parent)
@@ -190,11 +192,13 @@ def sheet(
 
 def _measured(path: Path, draws: int, seed: int) -> tuple[Record, Results]:
     """Read a record and measure it."""
-    import layout
+    from layout.record.files import read
 
+    record = read(path)
     with waiting("measuring"):
-        record = layout.read(path)
-        return record, layout.measure(record, draws=draws, seed=seed)
+        from layout.pipeline import measure
+
+        return record, measure(record, draws=draws, seed=seed)
 
 
 def _print(record: Record, results: Results, path: Path, sections: tuple[str, ...]) -> None:
