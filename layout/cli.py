@@ -14,7 +14,7 @@ from typing import TYPE_CHECKING, Annotated
 import typer
 
 from layout import __version__
-from layout.console import hush, say, speak_utf8, waiting
+from layout.console import hush, printable, say, speak_utf8, waiting
 from layout.errors import CallError, LayoutError
 from layout.files import reason, replace_file
 
@@ -30,7 +30,10 @@ IN_SHORT = ("summary", "warnings", "ranking")
 
 app = typer.Typer(add_completion=False, pretty_exceptions_enable=False, rich_markup_mode=None)
 
-RecordFile = Annotated[Path, typer.Argument(metavar="RECORD", help="a record, NAME.fragment.json")]
+# whether a file can be read is found out by reading it, so that there is one message for it
+RecordFile = Annotated[
+    Path, typer.Argument(metavar="RECORD", help="a record, NAME.fragment.json", readable=False)
+]
 AsJson = Annotated[bool, typer.Option("--json", help="print JSON, for programs")]
 
 
@@ -74,7 +77,9 @@ def describe(
 
 @app.command()
 def demo(
-    folder: Annotated[Path, typer.Argument(metavar="FOLDER", help="where to put it")] = Path("demo"),
+    folder: Annotated[Path, typer.Argument(metavar="FOLDER", help="where to put it", readable=False)] = Path(
+        "demo"
+    ),
 ) -> None:
     """Do the whole job on the bundled fragment.
 
@@ -97,8 +102,12 @@ def demo(
 
 @app.command()
 def new(
-    photographs: Annotated[list[Path], typer.Argument(metavar="PHOTO...", help="photographs of it")],
-    record: Annotated[Path, typer.Option("--output", "-o", metavar="RECORD", help="the record to begin")],
+    photographs: Annotated[
+        list[Path], typer.Argument(metavar="PHOTO...", help="photographs of it", readable=False)
+    ],
+    record: Annotated[
+        Path, typer.Option("--output", "-o", metavar="RECORD", help="the record to begin", readable=False)
+    ],
     name: Annotated[str | None, typer.Option(help="museum or excavation number [the file's name]")] = None,
 ) -> None:
     """Begin a record from photographs.
@@ -131,7 +140,7 @@ def check(record: RecordFile) -> int:
 
     with waiting("reading the photographs"):
         found = check(read(record), record.parent)
-    sys.stdout.write("".join(f"{line}\n" for line in found.lines()))
+    sys.stdout.write("".join(f"{printable(line)}\n" for line in found.lines()))
     return FINDING if found.findings else 0
 
 
@@ -172,7 +181,9 @@ def rank(record: RecordFile, as_json: AsJson = False) -> None:
 @app.command()
 def sheet(
     record: RecordFile,
-    file: Annotated[Path, typer.Option("--output", "-o", metavar="FILE", help=".html, .csv or .json")],
+    file: Annotated[
+        Path, typer.Option("--output", "-o", metavar="FILE", help=".html, .csv or .json", readable=False)
+    ],
 ) -> None:
     """Write the capacity sheet.
 

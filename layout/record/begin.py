@@ -1,22 +1,17 @@
-"""Beginning a record from photographs."""
+"""A new record from photographs: their names, sizes and hashes, and one view to begin with."""
 
 from __future__ import annotations
 
-import json
-import os
-from collections.abc import Sequence
+from collections import Counter
 from pathlib import Path
 
-from layout.errors import PhotographError
+from layout.errors import CallError
 from layout.image.photograph import probe, sha256_of
-from layout.record.files import parse
 from layout.record.model import SCHEMA, Record
 
 
-def begin(name: str, photographs: Sequence[Path], folder: Path) -> Record:
-    """Return a record of these photographs and nothing traced yet.
-
-    The first photograph is taken for one of the obverse.
+def begin(name: str, photographs: list[Path], folder: Path) -> Record:
+    """Begin a record: its photographs, and a view of the obverse on the first.
 
     Parameters
     ----------
@@ -30,28 +25,36 @@ def begin(name: str, photographs: Sequence[Path], folder: Path) -> Record:
     Raises
     ------
     PhotographError
-        If a photograph cannot be used, or does not lie in the record's folder or below it.
-    RecordError
-        If the name or a file's name cannot stand in a record.
+        If one of them cannot be used.
+    CallError
+        If one lies elsewhere than beside the record, is named twice, or none is given.
     """
-    described = [
+    files = [_beside(photograph, folder) for photograph in photographs]
+    if not files:
+        message = "needs one photograph or more, has none"
+        raise CallError(message)
+    if len(set(files)) < len(files):
+        message = f"is named {Counter(files)[files[0]]} times; name each photograph once"
+        raise CallError(message, file=Counter(files).most_common(1)[0][0])
+    stems = Counter(file.stem for file in files)
+    ids = [file.stem if stems[file.stem] == 1 else file.as_posix() for file in files]
+    return Record.model_validate(
         {
-            "id": f"p{number}",
-            "file": _beside(photograph, folder),
-            "sha256": sha256_of(photograph),
-            "size": probe(photograph),
+            "schema": SCHEMA,
+            "name": name,
+            "photographs": [
+                {"id": each, "file": file.as_posix(), "sha256": sha256_of(path), "size": probe(path)}
+                for each, file, path in zip(ids, files, photographs, strict=True)
+            ],
+            "views": [{"face": "obverse", "photograph": ids[0]}],
         }
-        for number, photograph in enumerate(photographs, 1)
-    ]
-    view = {"face": "obverse", "photograph": "p1"}
-    record = {"schema": SCHEMA, "name": name, "photographs": described, "views": [view]}
-    return parse(json.dumps(record))
+    )
 
 
-def _beside(photograph: Path, folder: Path) -> str:
+def _beside(photograph: Path, folder: Path) -> Path:
     """Return a photograph's name as seen from the record's folder."""
-    relative = Path(os.path.relpath(photograph.parent.resolve() / photograph.name, folder.resolve()))
-    if ".." in relative.parts:
-        message = f"lies outside the record's folder {folder}; begin the record beside its photographs"
-        raise PhotographError(message, file=photograph)
-    return relative.as_posix()
+    try:
+        return photograph.resolve().relative_to(folder.resolve())
+    except ValueError:
+        message = f"lies outside the record's folder {folder.resolve()}; copy it there first"
+        raise CallError(message, file=photograph) from None
