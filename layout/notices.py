@@ -41,7 +41,7 @@ WARNINGS: dict[str, str] = {
     "scale.disagree": "the sources of scale contradict one another ({sources}): their errors were enlarged "
     "{ratio} times; check the readings of the marks",
     "outline.crossing": "views[{view}]: outline[{first}] crosses outline[{second}] within a few pixels of "
-    "({x}, {y}); what stands out is cut off for the measurement and kept in the record.",
+    "({x}, {y}); what stands out is cut off for the measurement and kept in the record",
     "signs.efficiency": "the widths of signs rest on few effective draws ({percent} % of all): the measured "
     "entries disagree with what is usual; check their texts and ends",
 }

@@ -33,9 +33,10 @@ def begin(name: str, photographs: list[Path], folder: Path) -> Record:
     if not files:
         message = "needs one photograph or more, has none"
         raise CallError(message)
-    if len(set(files)) < len(files):
-        message = f"is named {Counter(files)[files[0]]} times; name each photograph once"
-        raise CallError(message, file=Counter(files).most_common(1)[0][0])
+    most, times = Counter(files).most_common(1)[0]
+    if times > 1:
+        message = f"is named {times} times; name each photograph once"
+        raise CallError(message, file=most)
     stems = Counter(file.stem for file in files)
     ids = [file.stem if stems[file.stem] == 1 else file.as_posix() for file in files]
     return Record.model_validate(

@@ -37,7 +37,7 @@ def place_of(steps: tuple[Step, ...]) -> str:
     for step in steps:
         if isinstance(step, int):
             place += f"[{step}]"
-        elif step.isidentifier():
+        elif step.isidentifier() and len(step) <= LONGEST:
             place += f".{step}" if place else step
         else:
             place += f"[{shown(step)}]"
@@ -51,7 +51,7 @@ def faults_of(error: ValidationError) -> list[Fault]:
 
 
 def _fault(detail: ErrorDetails) -> Fault:
-    """Return one fault; a missing or unknown key is reported at the part that has or lacks it."""
+    """Return one fault; a missing key is reported at the part that lacks it."""
     steps, kind = detail["loc"], detail["type"]
     if kind == "missing":
         if isinstance(steps[-1], int):
@@ -60,7 +60,7 @@ def _fault(detail: ErrorDetails) -> Fault:
     if kind == "too_long":
         return Fault(place_of(steps), _wrong_length(steps, detail["input"]))
     if kind == "extra_forbidden":
-        return Fault(place_of(steps[:-1]), _unknown_key(steps))
+        return Fault(place_of(steps), _unknown_key(steps))
     if steps[-1:] == ("[key]",):
         return Fault(place_of(steps[:-2]), "needs a name for each run, has an empty one")
     return Fault(place_of(steps), _sentence(detail))
@@ -106,7 +106,7 @@ def _unknown_key(steps: tuple[Step, ...]) -> str:
     key, known = str(steps[-1]), _known_keys(steps[:-1])
     near = difflib.get_close_matches(key, known, n=1)
     meant = f"did you mean {near[0]!r}? " if near else ""
-    return f"unknown key {shown(key)}; {meant}known here: {', '.join(known)}"
+    return f"unknown key; {meant}known here: {', '.join(known)}"
 
 
 def _known_keys(steps: tuple[Step, ...]) -> list[str]:
