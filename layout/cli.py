@@ -7,14 +7,13 @@ exists to report; 2: the input or the call is wrong, which is said in one line f
 from __future__ import annotations
 
 import json
-import sys
 from pathlib import Path
 from typing import TYPE_CHECKING, Annotated
 
 import typer
 
 from layout import __version__
-from layout.console import hush, printable, say, speak_utf8, waiting
+from layout.console import emit, printable, say, speak_utf8, waiting
 from layout.errors import CallError, LayoutError
 from layout.files import reason, replace_file
 
@@ -34,6 +33,14 @@ app = typer.Typer(add_completion=False, pretty_exceptions_enable=False, rich_mar
 RecordFile = Annotated[
     Path, typer.Argument(metavar="RECORD", help="a record, NAME.fragment.json", readable=False)
 ]
+PhotoFiles = Annotated[list[Path], typer.Argument(metavar="PHOTO...", help="JPEG, PNG, TIFF", readable=False)]
+Folder = Annotated[Path, typer.Argument(metavar="FOLDER", help="where to put it", readable=False)]
+NewRecord = Annotated[
+    Path, typer.Option("--output", "-o", metavar="RECORD", help="the record to begin", readable=False)
+]
+SheetFile = Annotated[
+    Path, typer.Option("--output", "-o", metavar="FILE", help=".html, .csv or .json", readable=False)
+]
 AsJson = Annotated[bool, typer.Option("--json", help="print JSON, for programs")]
 
 
@@ -42,20 +49,15 @@ def main(arguments: list[str] | None = None) -> int:
     speak_utf8()
     try:
         code = app(arguments, prog_name="layout", standalone_mode=False)
-        sys.stdout.flush()
     except LayoutError as error:
         return _refuse(error.lines())
     except typer.TyperException as error:
         return _refuse([_usage(error)])
     except KeyboardInterrupt:
         code = INTERRUPTED
-    except BrokenPipeError:
-        # whoever read the results has seen enough
-        hush()
-        return 0
+    except MemoryError:
+        return _refuse(["memory is too small for this; ask for fewer draws"])
     except OSError as error:
-        if error.filename is None:
-            hush()
         return _refuse([f"{error.filename or 'stdout'}: {reason(error)}"])
     if code == INTERRUPTED:
         say("interrupted; nothing was left half written")
@@ -69,25 +71,20 @@ def describe(
 ) -> None:
     """How big was this broken tablet, how much did its lost part hold, and what would have fitted there."""
     if version:
-        sys.stdout.write(f"layout {__version__}\n")
+        emit(f"layout {__version__}\n")
         raise typer.Exit
     if context.invoked_subcommand is None:
-        sys.stdout.write(f"{context.get_help()}\n")
+        emit(f"{context.get_help()}\n")
 
 
 @app.command()
-def demo(
-    folder: Annotated[Path, typer.Argument(metavar="FOLDER", help="where to put it", readable=False)] = Path(
-        "demo"
-    ),
-) -> None:
+def demo(folder: Folder = Path("demo")) -> None:
     """Do the whole job on the bundled fragment.
 
     Measure it, rank its candidates, write its sheets.
     """
     from layout.demo import unpack
-    from layout.sheet import FORMS, content_of, sheet
-    from layout.sheet.terminal import to_text
+    from layout.sheet import FORMS, sheet
 
     path, kept = unpack(folder)
     for file in kept:
@@ -96,18 +93,14 @@ def demo(
     written = [folder / f"sheet{form}" for form in FORMS]
     for file in written:
         _write(file, sheet(file.suffix, record, results, path))
-    sys.stdout.write(to_text(content_of(record, results, path), IN_SHORT))
-    sys.stdout.write("\n" + "".join(f"{file}\n" for file in (path, *written)))
+    _print(record, results, path, IN_SHORT)
+    emit("\n" + "".join(f"{file}\n" for file in (path, *written)))
 
 
 @app.command()
 def new(
-    photographs: Annotated[
-        list[Path], typer.Argument(metavar="PHOTO...", help="photographs of it", readable=False)
-    ],
-    record: Annotated[
-        Path, typer.Option("--output", "-o", metavar="RECORD", help="the record to begin", readable=False)
-    ],
+    photographs: PhotoFiles,
+    record: NewRecord,
     name: Annotated[str | None, typer.Option(help="museum or excavation number [the file's name]")] = None,
 ) -> None:
     """Begin a record from photographs.
@@ -140,7 +133,7 @@ def check(record: RecordFile) -> int:
 
     with waiting("reading the photographs"):
         found = check(read(record), record.parent)
-    sys.stdout.write("".join(f"{printable(line)}\n" for line in found.lines()))
+    emit("".join(f"{printable(line)}\n" for line in found.lines()))
     return FINDING if found.findings else 0
 
 
@@ -156,7 +149,7 @@ def measure(
     if as_json:
         from layout.sheet import to_json
 
-        sys.stdout.write(to_json(results))
+        emit(to_json(results))
     else:
         _print(read, results, record, MEASURED)
 
@@ -173,18 +166,13 @@ def rank(record: RecordFile, as_json: AsJson = False) -> None:
         from layout.candidates.rank import decides
 
         ranking = {"ranking": results.to_json()["ranking"], "decides": decides(results)}
-        sys.stdout.write(json.dumps(ranking, ensure_ascii=False, indent=2, allow_nan=False) + "\n")
+        emit(json.dumps(ranking, ensure_ascii=False, indent=2, allow_nan=False) + "\n")
     else:
         _print(read, results, record, ("ranking",))
 
 
 @app.command()
-def sheet(
-    record: RecordFile,
-    file: Annotated[
-        Path, typer.Option("--output", "-o", metavar="FILE", help=".html, .csv or .json", readable=False)
-    ],
-) -> None:
+def sheet(record: RecordFile, file: SheetFile) -> None:
     """Write the capacity sheet.
 
     It is a page, a table for spreadsheets, or JSON, by the file's ending.
@@ -217,7 +205,7 @@ def _print(record: Record, results: Results, path: Path, sections: tuple[str, ..
     from layout.sheet import content_of
     from layout.sheet.terminal import to_text
 
-    sys.stdout.write(to_text(content_of(record, results, path), sections))
+    emit(to_text(content_of(record, results, path), sections))
 
 
 def _write(file: Path, data: bytes) -> None:

@@ -33,14 +33,27 @@ def printable(text: str) -> str:
     )
 
 
+def emit(text: str) -> None:
+    """Write results to stdout; that the reader has seen enough and closed it is no error.
+
+    Raises
+    ------
+    OSError
+        If stdout takes no more for another reason, as on a full disk.
+    """
+    try:
+        sys.stdout.write(text)
+        sys.stdout.flush()
+    except OSError as error:
+        # let go of it, so that Python does not try once again as it ends
+        os.dup2(os.open(os.devnull, os.O_WRONLY), sys.stdout.fileno())
+        if not isinstance(error, BrokenPipeError):
+            raise
+
+
 def say(message: str) -> None:
     """Write one line to stderr, in the form of every message of this program."""
     sys.stderr.write(f"layout: {printable(message)}\n")
-
-
-def hush() -> None:
-    """Let go of a stdout that takes no more, so that Python does not try once again as it ends."""
-    os.dup2(os.open(os.devnull, os.O_WRONLY), sys.stdout.fileno())
 
 
 @contextmanager

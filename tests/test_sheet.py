@@ -360,3 +360,21 @@ def test_the_same_results_give_the_same_bytes(tmp_path: Path) -> None:
     for form in (".html", ".csv", ".json"):
         first, second = (sheet(form, _record(), zoo_results.results(), path) for _ in range(2))
         assert first == second
+
+
+# terminal
+
+
+@pytest.mark.parametrize("columns", [40, 80, 200])
+def test_no_terminal_is_too_narrow_for_a_number(monkeypatch: pytest.MonkeyPatch, columns: int) -> None:
+    monkeypatch.setenv("COLUMNS", str(columns))
+    content = _content()
+    text = to_text(content, ("view", "whole", "capacity", "ranking"))
+    for section in content.sections:
+        for table in section.tables:
+            cells = [cell for row in table.rows for cell in row if isinstance(cell, Summary)]
+            for cell in cells:
+                assert number(cell) in text
+                assert interval(cell) in text
+            assert all(row[-1] in text for row in table.rows if isinstance(row[-1], str))
+    assert max(map(len, text.splitlines())) <= max(columns, 80)
