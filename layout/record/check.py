@@ -132,12 +132,13 @@ def _width_is_known(record: Record) -> bool:
     return any(evidence.about == "width" for evidence in record.evidence)
 
 
-# What each result needs of the record: a test, and a sentence that says what to add. Without a scale there are no
-# millimetres, but capacity and ranking are ratios and do without.
+# What each result needs of the record: a test, and what to add. Without a scale there are no millimetres, but
+# capacity and ranking are ratios and do without.
 OfView = tuple[Callable[[View], bool], str]
 OfRecord = tuple[Callable[[Record], bool], str]
 
-SCALE: OfView = (_has_scale, "a scale: two marks or more on one bar, a ppi, or a known length")
+MARKS: OfView = (_has_scale, "two marks or more on one bar, a ppi, or a known length")
+SCALE: OfView = (_has_scale, "a scale")
 OUTLINE: OfView = (lambda view: _outline_points(view) >= 3, "an outline of three points or more")
 RULING: OfView = (lambda view: _lines(view) != [], "a ruling of two points or more")
 COLUMNS: OfView = (lambda view: _count(view, "vertical") >= 2, "two vertical rulings of two points or more")
@@ -168,7 +169,7 @@ CANDIDATES: OfRecord = (
 )
 
 OF_VIEW: dict[str, tuple[OfView, ...]] = {
-    "scale": (SCALE,),
+    "scale": (MARKS,),
     "preserved": (SCALE, OUTLINE),
 }
 OF_FACE: dict[str, tuple[OfView, ...]] = {

@@ -32,12 +32,14 @@ MARK_DECIMALS = 2
 READING_DECIMALS = 6
 
 Placed = tuple[str, Point]
+Box = tuple[float, float, float, float]
 TwoEnded = Iterable[Known | Entry | Gap]
 
 
 def inconsistencies(record: Record) -> list[Fault]:
     """Return what in a well-formed record contradicts itself, in the order of the file."""
     return [
+        *_presence(record),
         *_photographs(record.photographs),
         *itertools.chain.from_iterable(_view(record, number) for number in range(len(record.views))),
         *_repeated("lost.sides", [("", side) for side in record.lost.sides], "side"),
@@ -46,10 +48,15 @@ def inconsistencies(record: Record) -> list[Fault]:
     ]
 
 
+def _presence(record: Record) -> Iterator[Fault]:
+    """Hold that there is a photograph and a view."""
+    for part, name in ((record.photographs, "photograph"), (record.views, "view")):
+        if not part:
+            yield Fault(f"{name}s", f"needs one {name} or more, has none")
+
+
 def _photographs(photographs: tuple[Photograph, ...]) -> Iterator[Fault]:
     """Hold that photographs have names of their own and lie beside the record."""
-    if not photographs:
-        yield Fault("photographs", "needs one photograph or more, has none")
     places = [(f"photographs[{k}].id", each.id) for k, each in enumerate(photographs)]
     yield from _repeated("", places, "id")
     for k, each in enumerate(photographs):
@@ -59,7 +66,7 @@ def _photographs(photographs: tuple[Photograph, ...]) -> Iterator[Fault]:
 def _view(record: Record, number: int) -> Iterator[Fault]:
     """Return the faults of one view."""
     view, place = record.views[number], f"views[{number}]"
-    photograph = next((each for each in record.photographs if each.id == view.photograph), None)
+    photograph = _photograph_of(record, view)
     if photograph is None:
         known = ", ".join(each.id for each in record.photographs)
         yield Fault(
@@ -78,14 +85,12 @@ def _view(record: Record, number: int) -> Iterator[Fault]:
 
 def _points(view: View, photograph: Photograph, place: str) -> Iterator[Fault]:
     """Hold that points lie on the photograph, and what was traced on the face in the view's region."""
-    width, height = photograph.size
-    whole = (0.0, 0.0, float(width), float(height))
-    on_photograph = f"the photograph ({width} x {height})"
+    whole, on_photograph = _whole(photograph), _name_of(photograph)
     if view.region is None:
         yield from _outside(_traced(view, place), whole, on_photograph)
     else:
         x, y, region_width, region_height = view.region
-        if x < 0 or y < 0 or x + region_width > width or y + region_height > height:
+        if x < 0 or y < 0 or x + region_width > whole[2] or y + region_height > whole[3]:
             yield Fault(
                 f"{place}.region", f"{list(view.region)} reaches beyond {on_photograph}; make it smaller"
             )
@@ -95,7 +100,22 @@ def _points(view: View, photograph: Photograph, place: str) -> Iterator[Fault]:
     yield from _outside(_scale_points(view, place), whole, on_photograph)
 
 
-def _outside(points: Iterable[Placed], box: tuple[float, float, float, float], name: str) -> Iterator[Fault]:
+def _photograph_of(record: Record, view: View) -> Photograph | None:
+    """Return the photograph that a view shows, if the record has it."""
+    return next((each for each in record.photographs if each.id == view.photograph), None)
+
+
+def _whole(photograph: Photograph) -> Box:
+    """Return the box of a whole photograph."""
+    return 0.0, 0.0, float(photograph.size[0]), float(photograph.size[1])
+
+
+def _name_of(photograph: Photograph) -> str:
+    """Name a photograph by its size."""
+    return f"the photograph ({photograph.size[0]} x {photograph.size[1]})"
+
+
+def _outside(points: Iterable[Placed], box: Box, name: str) -> Iterator[Fault]:
     """Name the points outside; pixel centres are whole numbers, so that a box begins half a pixel before."""
     left, top, width, height = box
     for place, (x, y) in points:
@@ -222,13 +242,12 @@ def _columns(columns: tuple[CandidateColumn, ...], place: str) -> Iterator[Fault
 def _gaps(record: Record) -> Iterator[Fault]:
     """Hold that a gap stands in a view of this record, on its photograph."""
     yield from _lengths(record.gaps, "gaps")
-    sizes = {photograph.id: photograph.size for photograph in record.photographs}
     for k, gap in enumerate(record.gaps):
         if gap.view >= len(record.views):
             yield Fault(f"gaps[{k}].view", f"needs a view from 0 to {len(record.views) - 1}, has {gap.view}")
-        elif size := sizes.get(record.views[gap.view].photograph):
+        elif photograph := _photograph_of(record, record.views[gap.view]):
             ends = ((f"gaps[{k}].from", gap.from_), (f"gaps[{k}].to", gap.to))
-            yield from _outside(ends, (0.0, 0.0, *size), f"the photograph ({size[0]} x {size[1]})")
+            yield from _outside(ends, _whole(photograph), _name_of(photograph))
 
 
 def _repeated(place: str, named: list[tuple[str, str]], what: str) -> Iterator[Fault]:

@@ -19,6 +19,7 @@ from layout.record.faults import Step, faults_of, place_of, shown
 from layout.record.model import SCHEMA, Record
 
 LARGEST_FILE = 50 * 1024 * 1024
+TOO_LARGE = Fault("", f"is larger than {LARGEST_FILE >> 20} MB, which no record is; name another file")
 MOST_FAULTS = 50
 LONGEST_INTEGER = 18
 
@@ -52,11 +53,13 @@ def read(path: str | Path) -> Record:
     """
     path = Path(path)
     try:
-        # before opening: a device or a pipe would wait for ever
-        if not stat.S_ISREG(path.stat().st_mode):
+        # before opening: a pipe would wait for ever, and what is too large need not be read
+        found = path.stat()
+        if not stat.S_ISREG(found.st_mode):
             raise RecordError([Fault("", "is no file but a folder or a device; name a record")], file=path)
-        with path.open("rb") as file:
-            data = file.read(LARGEST_FILE + 1)
+        if found.st_size > LARGEST_FILE:
+            raise RecordError([TOO_LARGE], file=path)
+        data = path.read_bytes()
     except (OSError, ValueError) as error:
         raise RecordError([Fault("", f"cannot be read: {reason(error)}")], file=path) from None
     return parse(data, file=path)
@@ -80,10 +83,8 @@ def parse(data: bytes | str, *, file: Path | None = None) -> Record:
     try:
         faults, record = _parse(data)
     except RecursionError:
-        faults, record = (
-            [Fault("", "is nested too deeply for a record; compare its brackets with the format")],
-            None,
-        )
+        text = "is nested too deeply for a record; compare its brackets with the format"
+        faults, record = [Fault("", text)], None
     if record is None or faults:
         if len(faults) > MOST_FAULTS:
             faults[MOST_FAULTS:] = [Fault("", f"{len(faults) - MOST_FAULTS} more faults; mend these first")]
@@ -138,9 +139,7 @@ def to_text(record: Record) -> str:
 def _parse(data: bytes | str) -> tuple[list[Fault], Record | None]:
     """Return the faults, and the record if its form is sound; each stage needs the one before it."""
     if len(data) > LARGEST_FILE:
-        return [
-            Fault("", f"is larger than {LARGEST_FILE >> 20} MB, which no record is; name another file")
-        ], None
+        return [TOO_LARGE], None
     try:
         text = data.decode("utf-8-sig") if isinstance(data, bytes) else data
         if not text.strip():
