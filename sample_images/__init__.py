@@ -1,0 +1,1 @@
+"""Invented fragments: photographs, records, truths, and the program that rendered them."""
