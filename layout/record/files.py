@@ -126,7 +126,7 @@ def to_text(record: Record) -> str:
     >>> photograph = {"id": "p", "file": "q.jpg", "size": [640, 480]}
     >>> view = {"face": "obverse", "photograph": "p"}
     >>> record = {"schema": 1, "name": "Q", "photographs": [photograph], "views": [view]}
-    >>> to_text(Record.model_validate(record)).splitlines()[6]
+    >>> to_text(Record.model_validate(record)).splitlines()[7]
     '      "size": [640, 480]'
     """
     values = record.model_dump(by_alias=True, exclude_unset=True, exclude_none=True)
