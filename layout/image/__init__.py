@@ -1,0 +1,1 @@
+"""Pictures: headers, decoding, orientation, limits and hash."""
