@@ -25,8 +25,8 @@ source."""
 SPREAD_SCALE = 0.15
 """Scale of the half-normal prior of the spread (sd of the logarithm) from column to column."""
 
-SPREADS = np.geomspace(0.003, 0.75, 36)
-"""Grid of the spread: the half-normal prior leaves 1.6 % below it."""
+SPREADS = np.geomspace(0.001, 0.75, 30)
+"""Grid of the spread: the half-normal prior leaves 0.5 % below it."""
 
 
 @dataclass(frozen=True, eq=False)
@@ -84,14 +84,16 @@ def find_widest(entries: Sequence[SignCounts], widths: SignWidths) -> Floats:
     Floats
         In full digits, shape (N,); zero where nothing is written.
     """
-    return widths.need(_undominated(np.array(entries, dtype=float))).max(axis=1)
+    widest: Floats = widths.need(_undominated(np.array(entries, dtype=np.float64))).max(axis=1)
+    return widest
 
 
 def _undominated(counts: Floats) -> Floats:
     """Return the entries that can be the widest: those of which no other has as many signs of every kind."""
     different = np.unique(counts, axis=0)
     covered = (different[:, None] <= different).all(axis=2)
-    return different[covered.sum(axis=1) == 1]
+    undominated: Floats = different[covered.sum(axis=1) == 1]
+    return undominated
 
 
 def learn_clearance(column_widths: Floats, widest: Floats, rng: np.random.Generator) -> Clearance:
@@ -139,19 +141,18 @@ def _draw_spread(log_ratios: Floats, rng: np.random.Generator) -> Floats:
     """Draw tau (N,) from its marginal posterior given log ratios (N, C), mu integrated out."""
     rows, columns = log_ratios.shape
     offset = log_ratios - np.log(TYPICAL)
-    total = offset.sum(axis=1)[:, None]
-    squares = (offset**2).sum(axis=1)[:, None]
-    variance = SPREADS**2
+    # (G, 1) against (N,)
+    variance = SPREADS[:, None] ** 2
     whole = variance + columns * TYPICAL_SD_LOG**2
     # the offsets' covariance is tau^2 I + s^2 11': determinant and inverse by Sherman and Morrison
-    misfit = (squares - total**2 * (TYPICAL_SD_LOG**2 / whole)) / variance
     log_norm = (columns - 1) * np.log(variance) + np.log(whole)
+    misfit = (offset**2).sum(axis=1) / variance
+    misfit -= offset.sum(axis=1) ** 2 * (TYPICAL_SD_LOG**2 / (whole * variance))
     # the grid is even in log tau, hence the factor tau
     log_prior = np.log(SPREADS) - 0.5 * (SPREADS / SPREAD_SCALE) ** 2
-    log_mass = log_prior - 0.5 * (log_norm + misfit)
-    cumulated = np.cumsum(np.exp(log_mass - log_mass.max(axis=1, keepdims=True)), axis=1)
-    level = rng.random((rows, 1)) * cumulated[:, -1:]
-    node = np.minimum((cumulated < level).sum(axis=1), len(SPREADS) - 1)
+    log_mass = log_prior[:, None] - 0.5 * (log_norm + misfit)
+    cumulated = np.cumsum(np.exp(log_mass - log_mass.max(axis=0)), axis=0)
+    node = (cumulated < rng.random(rows) * cumulated[-1]).sum(axis=0)
     step = np.log(SPREADS[1] / SPREADS[0])
     # even within the node's cell, so that the spread is a number and not one of a list
     tau: Floats = SPREADS[node] * np.exp(step * (rng.random(rows) - 0.5))
