@@ -36,13 +36,10 @@ def _replaced(old: str, new: str) -> str:
     ("content", "said"),
     [
         pytest.param("", "empty", id="empty"),
-        pytest.param("   \n", "", id="blank"),
         pytest.param("no record at all", "JSON", id="not JSON"),
         pytest.param(_text()[:-40], "JSON", id="cut off"),
         pytest.param("[1, 2]", "", id="a list"),
-        pytest.param("null", "", id="null"),
         pytest.param(b"\xff\xfe\x00{", "", id="not UTF-8"),
-        pytest.param(b"\x00" * 64, "", id="zeros"),
         pytest.param("[" * 200_000, "", id="deep nesting"),
         pytest.param('{"a":' * 100_000 + "1" + "}" * 100_000, "", id="deep nesting that ends"),
         pytest.param(_replaced('"schema": 1', '"schema": 99'), "schema", id="wrong schema number"),

@@ -8,7 +8,7 @@ from __future__ import annotations
 
 from dataclasses import dataclass
 
-from layout.quantity import Quantity, Summary
+from layout.quantity import Summary
 from layout.record.model import Record
 from layout.results import (
     AxisResult,
@@ -17,8 +17,8 @@ from layout.results import (
     SignWidthResult,
     ViewResult,
 )
-from layout.sheet.numbers import plain, shown
-from layout.sheet.prose import CAUTIONS, NOTATION, RELATIVE_SUPPORT, method
+from layout.sheet.numbers import plain
+from layout.sheet.prose import CAUTIONS, NOTATION, RELATIVE_SUPPORT, method, summary
 
 Cell = str | Summary | None
 Row = tuple[Cell, ...]
@@ -75,7 +75,7 @@ def compose(record: Record, results: Results, record_sha256: str, decides: str |
         The line that says what decides the order of the candidates; None without a ranking.
     """
     sections = [
-        Section("summary", "In short", sentences=_summary(results)),
+        Section("summary", "In short", sentences=summary(results)),
         Section("warnings", "Warnings", sentences=tuple(warning.text for warning in results.warnings)),
         *(_view(view, index) for index, view in enumerate(results.views)),
         _whole(results.reconstructed),
@@ -118,40 +118,6 @@ def _facts(record: Record) -> tuple[tuple[str, str], ...]:
             ("SHA-256", photograph.sha256 or ""),
         ]
     return tuple((label, text) for label, text in facts if text)
-
-
-def _summary(results: Results) -> tuple[str, ...]:
-    """Return the answer in plain sentences, as far as there is one."""
-    sentences = []
-    whole, capacity = results.reconstructed, results.capacity
-    if whole is not None:
-        survives = next((view.preserved for view in results.views if view.face == whole.face), None)
-        kept = "" if survives is None else f", of which {_say(survives.width)} survive"
-        sentences.append(
-            f"The tablet is inferred to have been {_say(whole.width)} wide{kept}, "
-            f"and {_say(whole.height)} high."
-        )
-        for side, space in whole.lost_space_by_side.items():
-            sentences.append(f"On the {side} {_say(space)} of writing surface are lost.")
-    if capacity is not None and capacity.sign_widths is not None:
-        sentences.append(f"The lost space has room for {_say(capacity.sign_widths)}{_in_signs(results)}.")
-    if results.ranking:
-        fits = [row.name for row in results.ranking if row.verdict == "fits"]
-        judged = sum(row.verdict is not None for row in results.ranking)
-        sentences.append(
-            f"Of {judged} candidates {len(fits)} fit{'s' if len(fits) == 1 else ''} the lost space"
-            f"{': ' + ', '.join(fits) if fits else ''}."
-        )
-    return tuple(sentences)
-
-
-def _in_signs(results: Results) -> str:
-    """Return the capacity in mean signs of running text, from the same draws."""
-    if results.capacity is None or results.capacity.sign_widths is None or results.sign_width is None:
-        return ""
-    sign_widths, mean_sign = results.capacity.sign_widths, results.sign_width.mean_sign
-    mean_signs = Quantity("mean signs", sign_widths.draws / mean_sign.draws)
-    return f", or for {_say(mean_signs)} of running text"
 
 
 def _view(view: ViewResult, index: int) -> Section:
@@ -321,8 +287,3 @@ def _ranking(results: Results, decides: str | None) -> Section:
         (Table("Best first, in sign widths", heads, rows, unit="sign widths"),),
         (*(() if decides is None else (decides,)), *contradicted, RELATIVE_SUPPORT),
     )
-
-
-def _say(quantity: Quantity) -> str:
-    """Write a quantity for running text."""
-    return shown(quantity.summary())

@@ -1,8 +1,10 @@
-"""The sheet's standing sentences: notation, method, cautions."""
+"""The sheet's sentences: the answer in short, notation, method, cautions."""
 
 from __future__ import annotations
 
+from layout.quantity import Quantity
 from layout.results import Results
+from layout.sheet.numbers import shown
 
 NOTATION = (
     "41.38(22) mm is a value of 41.38 mm (the median) with a standard uncertainty of 0.22 mm: the bracket "
@@ -25,6 +27,40 @@ CAUTIONS = (
     "Handling the object, and bringing a scale near it, is for the institution's conservators and its own "
     "rules to decide. The scale never touches the clay.",
 )
+
+
+def summary(results: Results) -> tuple[str, ...]:
+    """Return the answer in plain sentences, as far as there is one."""
+    sentences = []
+    whole, capacity = results.reconstructed, results.capacity
+    if whole is not None:
+        survives = next((view.preserved for view in results.views if view.face == whole.face), None)
+        kept = "" if survives is None else f", of which {_say(survives.width)} survive"
+        sentences.append(
+            f"The tablet is inferred to have been {_say(whole.width)} wide{kept}, "
+            f"and {_say(whole.height)} high."
+        )
+        for side, space in whole.lost_space_by_side.items():
+            sentences.append(f"On the {side} {_say(space)} of writing surface are lost.")
+    if capacity is not None and capacity.sign_widths is not None:
+        sentences.append(f"The lost space has room for {_say(capacity.sign_widths)}{_in_signs(results)}.")
+    if results.ranking:
+        fits = [row.name for row in results.ranking if row.verdict == "fits"]
+        judged = sum(row.verdict is not None for row in results.ranking)
+        sentences.append(
+            f"Of {judged} candidates {len(fits)} fit{'s' if len(fits) == 1 else ''} the lost space"
+            f"{': ' + ', '.join(fits) if fits else ''}."
+        )
+    return tuple(sentences)
+
+
+def _in_signs(results: Results) -> str:
+    """Return the capacity in mean signs of running text, from the same draws."""
+    if results.capacity is None or results.capacity.sign_widths is None or results.sign_width is None:
+        return ""
+    sign_widths, mean_sign = results.capacity.sign_widths, results.sign_width.mean_sign
+    mean_signs = Quantity("mean signs", sign_widths.draws / mean_sign.draws)
+    return f", or for {_say(mean_signs)} of running text"
 
 
 def method(results: Results) -> tuple[str, ...]:
@@ -65,3 +101,8 @@ def method(results: Results) -> tuple[str, ...]:
         ),
     )
     return tuple(text for used, text in steps if used)
+
+
+def _say(quantity: Quantity) -> str:
+    """Write a quantity for running text."""
+    return shown(quantity.summary())
