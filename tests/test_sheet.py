@@ -18,6 +18,7 @@ import numpy as np
 import pytest
 
 from layout.errors import CallError
+from layout.notices import Notice
 from layout.quantity import Summary
 from layout.record.model import Record
 from layout.results import Results
@@ -153,9 +154,9 @@ def test_every_quantity_of_the_results_is_on_the_sheet() -> None:
 def test_every_assumption_warning_and_missing_result_is_on_the_sheet() -> None:
     results = zoo_results.results()
     page = to_html(_content(), None, None)
-    texts = [one.text for one in (*results.assumptions, *results.warnings)]
-    for text in (*texts, *(one.text for one in results.missing)):
-        assert text in page
+    notices: list[Notice] = [*results.assumptions, *results.warnings, *results.missing]
+    for notice in notices:
+        assert notice.text in page
 
 
 def test_the_sheet_explains_its_notation_and_its_limits() -> None:
