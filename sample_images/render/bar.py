@@ -8,7 +8,7 @@ from typing import Literal
 import cv2
 import numpy as np
 
-from sample_images.render.grid import Field, Grid, Points
+from sample_images.render.grid import Field, Points
 
 OVERSAMPLING = 3
 TALL = {"ticks": 9.0, "blocks": 8.0}

@@ -55,12 +55,12 @@ class Camera:
         """Place of the pinhole, mm."""
         view = self.axes[2]
         along = self.distance / -view[2]
-        return np.array([*self.aim, self.bar_z]) - along * view
+        return np.asarray(np.array([*self.aim, self.bar_z]) - along * view, np.float64)
 
     def project(self, points: Points) -> Points:
         """Return the pixels (N, 2) of points (N, 3)."""
         seen = (points - self.pinhole) @ self.axes.T
-        return self.centre_px + self.focal_px * seen[:, :2] / seen[:, 2:]
+        return np.asarray(self.centre_px + self.focal_px * seen[:, :2] / seen[:, 2:], np.float64)
 
     def local_mm_per_px(self, point: Points) -> float:
         """Return the scale at a point (3,) in its horizontal plane: the root of the area of a pixel."""
@@ -114,7 +114,7 @@ def trace_rays(
         z -= STEP_MM
     below = above - np.float32(STEP_MM)
     for _ in range(6):
-        middle = (above + below) / 2
+        middle = np.asarray((above + below) / 2, np.float32)
         hit = ground(middle) >= middle
         below = np.where(hit, middle, below)
         above = np.where(hit, above, middle)

@@ -15,7 +15,7 @@ Points = NDArray[np.float64]
 
 @dataclass(frozen=True)
 class Grid:
-    """A lattice of ``width`` x ``height`` points; ``left`` and ``upper`` are the first point's x and y in mm."""
+    """A lattice of ``width`` x ``height`` points; ``left``, ``upper``: the first point's x and y in mm."""
 
     left: float
     upper: float
@@ -40,7 +40,7 @@ class Grid:
 
     def index(self, points_mm: Points) -> Points:
         """Return where points (N, 2) lie on the lattice, in (column, row), fractions kept."""
-        return (points_mm - np.array([self.left, self.upper])) * self.px_per_mm
+        return np.asarray((points_mm - np.array([self.left, self.upper])) * self.px_per_mm, np.float64)
 
     def coarser(self, factor: float) -> Grid:
         """Return a lattice over the same area with points ``factor`` times as far apart."""

@@ -38,7 +38,7 @@ class Tracer:
         return self._clicked(evenly(pixels, _length(pixels) / (count - 1)))
 
     def follow_edge(self, edge: Points, spacing_mm: float) -> list[list[float]]:
-        """Return clicks along a contour (N, 3): the hand strays from it, and returns over some millimetres."""
+        """Return clicks along a contour (N, 3): the hand strays from it and returns."""
         pixels = self.camera.project(edge)
         mm_per_px = self.camera.local_mm_per_px(edge[len(edge) // 2])
         count = max(3, round(_length(pixels) * mm_per_px / spacing_mm) + 1)

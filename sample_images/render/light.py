@@ -21,8 +21,8 @@ class Lamp:
     elevation_deg: float = 34.0
     half_size_deg: float = 5.0
     key: float = 1.0
-    fill: float = 0.16
-    sky: float = 0.20
+    fill: float = 0.21
+    sky: float = 0.17
 
     @property
     def towards(self) -> tuple[float, float, float]:
@@ -41,14 +41,14 @@ def light_on(heights: Field, grid: Grid, lamp: Lamp) -> tuple[Field, Field]:
     facing = np.clip((up - east * slope_x - south * slope_y) * steep, 0, None) / up
     # clay is rough: the side that faces the lamp squarely is less bright than Lambert's law says
     facing = 1.25 * facing / (1 + 0.25 * facing)
-    back_x, back_y, back_up = -0.62 * east, -0.62 * south, 0.75
+    back_x, back_y, back_up = -0.95 * east, -0.95 * south, 0.55
+    # a white card on the other side of the tablet
     fill = np.clip((back_up - back_x * slope_x - back_y * slope_y) * steep, 0, None) / back_up
+    fill = np.minimum(fill, 1.6)
     sky = 0.5 + 0.5 * steep
     openness = open_sky(heights, grid)
     key = lamp.key * facing * unshadowed(heights, grid, lamp)
-    return np.asarray(key, np.float32), np.asarray(
-        (lamp.fill * fill + lamp.sky * sky) * openness, np.float32
-    )
+    return np.asarray(key, np.float32), np.asarray((lamp.fill * fill + lamp.sky * sky) * openness, np.float32)
 
 
 def unshadowed(heights: Field, grid: Grid, lamp: Lamp) -> Field:
@@ -86,7 +86,7 @@ def horizon_tangent(heights: Field, grid: Grid, azimuth_deg: float, reach_px: tu
         # far away a shadow's edge is soft, and nothing higher than the relief throws it
         if relief * grid.px_per_mm / reach < np.tan(np.radians(10)):
             break
-        reach += max(1.0, 0.03 * reach)
+        reach += max(1.0, 0.008 * reach)
     return horizon
 
 

@@ -41,8 +41,8 @@ def over(grid: Grid, length_mm: float, rng: np.random.Generator) -> Field:
     if sigma_coarse < 0.3:
         return white
     smooth = cv2.GaussianBlur(white, (0, 0), sigma_coarse)
-    field = smooth / max(float(smooth.std()), 1e-6)
-    return field if coarse == grid else _cubic(np.asarray(field, np.float32), coarse, grid)
+    field = np.asarray(smooth / max(float(smooth.std()), 1e-6), np.float32)
+    return field if coarse == grid else _cubic(field, coarse, grid)
 
 
 def layered(grid: Grid, rms_by_length: Mapping[float, float], rng: np.random.Generator) -> Field:

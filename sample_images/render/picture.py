@@ -43,14 +43,16 @@ def expose(scene: Scene, light: Field, camera: Camera, window: Window) -> tuple[
 
 def develop(linear: Field, exposure: float, rng: np.random.Generator, *, noise: float = 1.0) -> Picture:
     """Return the picture as 8-bit blue, green, red: blur of the lens, noise of the sensor, tone curve."""
-    blurred = np.asarray(cv2.GaussianBlur(linear, (0, 0), 0.62), np.float32) * np.float32(exposure)
+    blurred = np.asarray(cv2.GaussianBlur(linear, (0, 0), 0.72), np.float32) * np.float32(exposure)
     grain = rng.standard_normal(blurred.shape, np.float32)
     grain = np.asarray(cv2.GaussianBlur(grain, (0, 0), 0.55), np.float32) * 1.6
     blurred += np.float32(noise) * grain * np.sqrt(2.6e-5 * np.clip(blurred, 0, 1) + 1.2e-6)
     clipped = np.clip(blurred, 0, None)
     # a shoulder like film's, so that lips of wedges do not burn out
     toned = clipped * (1 + 0.10 * clipped) / (1 + 0.42 * clipped)
-    encoded = np.where(toned <= 0.0031308, 12.92 * toned, 1.055 * np.clip(toned, 1e-6, None) ** (1 / 2.4) - 0.055)
+    encoded = np.where(
+        toned <= 0.0031308, 12.92 * toned, 1.055 * np.clip(toned, 1e-6, None) ** (1 / 2.4) - 0.055
+    )
     eight = np.clip(np.round(255 * encoded + rng.uniform(-0.5, 0.5, encoded.shape)), 0, 255).astype(np.uint8)
     return np.ascontiguousarray(eight[..., ::-1])
 

@@ -5,11 +5,13 @@ from __future__ import annotations
 import json
 from collections.abc import Sequence
 from dataclasses import dataclass
+from itertools import pairwise
 from pathlib import Path
 from typing import Any
 
 import numpy as np
 import shapely
+from numpy.typing import NDArray
 
 from sample_images.render.camera import Camera
 from sample_images.render.fragments import SITE, Proposal, Sitting
@@ -49,8 +51,10 @@ def make_record(sitting: Sitting, tablet: Tablet, shots: Sequence[Shot], photo: 
         "mm": round(float(sitting.camera.distance + rng.normal(0, distance_sd))),
         "sd": distance_sd,
     }
-    views = [_view(sitting, shot, (below, distance), np.random.default_rng([sitting.spec.seed, 22, number]))
-             for number, shot in enumerate(shots)]
+    views = [
+        _view(sitting, shot, (below, distance), np.random.default_rng([sitting.spec.seed, 22, number]))
+        for number, shot in enumerate(shots)
+    ]
     return {
         "schema": 1,
         "name": sitting.spec.name,
@@ -70,7 +74,10 @@ def make_record(sitting: Sitting, tablet: Tablet, shots: Sequence[Shot], photo: 
             }
         ],
         "views": views,
-        "thickness": {"mm": round(float(body.thickness + rng.normal(0, thickness_sd)), 1), "sd": thickness_sd},
+        "thickness": {
+            "mm": round(float(body.thickness + rng.normal(0, thickness_sd)), 1),
+            "sd": thickness_sd,
+        },
         "convexity": {
             "mm": round(max(0.2, float(body.convexities[0] + rng.normal(0, convexity_sd))), 1),
             "sd": convexity_sd,
@@ -106,8 +113,7 @@ def _view(sitting: Sitting, shot: Shot, heights: tuple[Json, Json], rng: np.rand
     readings, places = sitting.bar.marks()
     name = "a" if shot.side.face == "obverse" else "b"
     marks = [
-        {"bar": name, "at": at, "mm": int(mm)}
-        for at, mm in zip(tracer.point(places), readings, strict=True)
+        {"bar": name, "at": at, "mm": int(mm)} for at, mm in zip(tracer.point(places), readings, strict=True)
     ]
     rulings = surviving_lines(shot.side)
     return {
@@ -124,7 +130,9 @@ def _view(sitting: Sitting, shot: Shot, heights: tuple[Json, Json], rng: np.rand
             "tilt_sd_deg": sitting.tilt_sd_deg,
             "lens": None,
         },
-        "outline": [{"edge": edge, "points": points} for edge, points in tracer.trace_outline(shot.side.outline)],
+        "outline": [
+            {"edge": edge, "points": points} for edge, points in tracer.trace_outline(shot.side.outline)
+        ],
         "rulings": [_ruling(tracer, shot.side, name, line) for name, line in rulings],
         "writing": _writing(tracer, shot.side, rulings, rng),
     }
@@ -140,7 +148,7 @@ def _ruling(tracer: Tracer, side: Side, name: str, line: Line) -> Json:
 
 
 def surviving_lines(side: Side) -> list[tuple[str, Line]]:
-    """Return the lines of which a useful stretch survives, cut to it, with the names that the record gives."""
+    """Return the lines of which a useful stretch survives, cut to it, with the record's names for them."""
     face = shapely.Polygon(side.contour.points).buffer(-2.5).intersection(side.remains().buffer(-0.8))
     named = []
     counts = {"vertical": 0, "horizontal": 0}
@@ -152,7 +160,7 @@ def surviving_lines(side: Side) -> list[tuple[str, Line]]:
     return named
 
 
-def _longest_run(points: Points, inside: np.ndarray) -> Points:
+def _longest_run(points: Points, inside: NDArray[np.bool_]) -> Points:
     """Return the longest stretch of points that all lie inside."""
     edges = np.flatnonzero(np.diff(np.concatenate([[0], inside.astype(int), [0]])))
     if len(edges) == 0:
@@ -171,7 +179,8 @@ def _writing(
     whole = [
         entry
         for entry in side.entries
-        if f"v{entry.column + 1}" in names and shapely.contains_xy(face, np.array([entry.start, entry.end])).all()
+        if f"v{entry.column + 1}" in names
+        and shapely.contains_xy(face, np.array([entry.start, entry.end])).all()
     ]
     chosen = sorted(rng.choice(len(whole), min(18, len(whole)), replace=False))
     return [_entry(tracer, side, whole[index], names) for index in chosen]
@@ -237,12 +246,12 @@ def _columns(side: Side, widths: tuple[float, ...]) -> list[Json]:
     verticals = [(name, int(line.id[1:])) for name, line in surviving_lines(side) if line.runs == "vertical"]
     return [
         {"left": left, "right": right, "width": widths[first - 1]}
-        for (left, first), (right, second) in zip(verticals, verticals[1:], strict=False)
+        for (left, first), (right, second) in pairwise(verticals)
         if second == first + 1
     ]
 
 
 def write_json(path: Path, data: Json) -> None:
-    """Write a record or a truth as the program writes records: two-space indent, short points on one line."""
+    """Write a record or a truth: UTF-8, two-space indent."""
     text = json.dumps(data, ensure_ascii=False, indent=2)
     path.write_text(text + "\n", encoding="utf-8")

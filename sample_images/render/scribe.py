@@ -83,7 +83,9 @@ def column_widths(columns: tuple[Column, ...], hand: Hand, rng: np.random.Genera
     )
 
 
-def draw_verticals(boundaries: list[float], span: tuple[float, float], rng: np.random.Generator) -> list[Line]:
+def draw_verticals(
+    boundaries: list[float], span: tuple[float, float], rng: np.random.Generator
+) -> list[Line]:
     """Return the vertical rulings through the boundaries (x at y = 0), none quite parallel to the next."""
     y = np.arange(span[0], span[1], 0.1)
     lines = []
@@ -99,7 +101,7 @@ def draw_verticals(boundaries: list[float], span: tuple[float, float], rng: np.r
 def draw_horizontals(
     top: float, count: int, hand: Hand, span: tuple[float, float], rng: np.random.Generator
 ) -> list[Line]:
-    """Return ``count`` lines from y = ``top`` down, a pitch apart: rulings, or the lines that signs stand on."""
+    """Return ``count`` lines from y = ``top`` down, a pitch apart: rulings, or what signs stand on."""
     x = np.arange(span[0], span[1], 0.1)
     lines = []
     for number in range(count):

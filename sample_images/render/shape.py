@@ -7,6 +7,7 @@ from typing import Literal
 
 import numpy as np
 import shapely
+from numpy.typing import NDArray
 from scipy.spatial import cKDTree
 
 from sample_images.render import noise
@@ -105,7 +106,7 @@ def make_contour(body: Body, rng: np.random.Generator) -> Contour:
     outward = np.column_stack([tangent[:, 1], -tangent[:, 0]])
     outward /= np.hypot(*outward.T)[:, None]
     length = SPACING * len(smooth)
-    at = SPACING * np.arange(len(smooth))
+    at = SPACING * np.arange(len(smooth), dtype=np.float64)
     wobble = 0.85 * noise.along(at, 11.0, rng, period_mm=length)
     wobble += 0.5 * noise.along(at, 3.0, rng, period_mm=length)
     return Contour(smooth + body.wobble * wobble[:, None] * outward, _edges(body, smooth))
@@ -139,11 +140,11 @@ def break_path(corners: Points, rng: np.random.Generator) -> Points:
     tangent = np.gradient(path, axis=0)
     across = np.column_stack([tangent[:, 1], -tangent[:, 0]]) / np.hypot(*tangent.T)[:, None]
     across = np.column_stack([np.convolve(a, np.ones(161) / 161, "same") for a in across.T])
-    at = SPACING * np.arange(len(path))
+    at = SPACING * np.arange(len(path), dtype=np.float64)
     offset = np.zeros(len(path))
     for length_mm, rms in ((28.0, 1.8), (9.0, 0.8), (3.0, 0.32), (1.0, 0.13), (0.4, 0.05)):
         offset += rms * noise.along(at, length_mm, rng)
-    return path + offset[:, None] * across
+    return np.asarray(path + offset[:, None] * across, np.float64)
 
 
 def cut_contour(contour: Contour, breaks: list[Points], lost: list[Points]) -> list[tuple[str, Points]]:
@@ -172,19 +173,18 @@ def cut_contour(contour: Contour, breaks: list[Points], lost: list[Points]) -> l
             joined = [contour.points[previous]] if pieces and not pieces[-1][0].startswith("break") else []
             pieces.append((label, joined))
         pieces[-1][1].append(contour.points[index])
-        previous = index
+        previous = int(index)
     return _join(pieces, breaks)
 
 
-def _between(inside: np.ndarray) -> np.ndarray:
+def _between(inside: NDArray[np.bool_]) -> NDArray[np.intp]:
     """Return the one run of ring positions from the first to the last inside, over any gaps in it."""
-    away = np.flatnonzero(~inside)
-    gaps = np.diff(np.concatenate([np.flatnonzero(inside), [np.flatnonzero(inside)[0] + len(inside)]]))
-    widest = int(np.argmax(gaps))
     hits = np.flatnonzero(inside)
+    gaps = np.diff(np.append(hits, hits[0] + len(inside)))
+    widest = int(np.argmax(gaps))
     first = hits[(widest + 1) % len(hits)]
     run = len(inside) - int(gaps[widest]) + 1
-    return (first + np.arange(run)) % len(inside) if len(away) else hits
+    return np.asarray((first + np.arange(run)) % len(inside), np.intp)
 
 
 def _join(pieces: list[tuple[str, list[Points]]], breaks: list[Points]) -> list[tuple[str, Points]]:
@@ -209,8 +209,14 @@ def inward_distance(contour: Contour, grid: Grid) -> Field:
     x, y = np.broadcast_arrays(grid.x, grid.y)
     places = np.column_stack([x.ravel(), y.ravel()])
     distance, _ = cKDTree(contour.points).query(places, distance_upper_bound=9.0)
-    distance = np.minimum(distance, 9.0).reshape(grid.shape)
-    return np.where(grid.fill(contour.points), distance, -distance).astype(np.float32)
+    inside = grid.fill(contour.points).ravel()
+    # at the girth itself the face stands upright, and a wrong sign would show as a step
+    near = np.flatnonzero(distance < 1.0)
+    girth = shapely.Polygon(contour.points)
+    shapely.prepare(girth)
+    inside[near] = shapely.contains_xy(girth, places[near])
+    signed = np.where(inside, 1.0, -1.0) * np.minimum(distance, 9.0)
+    return signed.reshape(grid.shape).astype(np.float32)
 
 
 def whole_face(body: Body, inward: Field, grid: Grid) -> Field:

@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterator
 from dataclasses import replace
 from pathlib import Path
 
@@ -19,7 +18,7 @@ from sample_images.render.scene import Ground, lay_out
 from sample_images.render.tablet import Side, Tablet, make_tablet
 
 EXPOSURE = 1.25
-PLATE_SIZE = (4000, 5640)
+PLATE_SIZE = (4000, 5960)
 PLATE_CENTRE = PLATE_SIZE[0] // 2
 EDGES: tuple[EdgeFace, ...] = ("upper edge", "left edge", "right edge", "lower edge")
 EDGE_PX = 500
@@ -98,33 +97,37 @@ def photograph(sitting: Sitting, tablet: Tablet) -> Picture:
 
 def _add_edge(plate: Field, sitting: Sitting, tablet: Tablet, face: EdgeFace, obverse: Shot) -> None:
     """Photograph an edge and put it beside the obverse."""
-    scale = sitting.camera.mm_per_px
-    scene = edge_scene(tablet, face, 1 / scale)
+    scene = edge_scene(tablet, face, 1 / sitting.camera.mm_per_px)
     grid = scene.grid
-    aim = (grid.left + (grid.width / grid.px_per_mm) / 2, grid.upper + (grid.height / grid.px_per_mm) / 2)
+    aim = (grid.left + grid.width / grid.px_per_mm / 2, grid.upper + grid.height / grid.px_per_mm / 2)
     size = (round(grid.width * 1.02), round(grid.height * 1.02))
-    camera = Camera(size, scale, sitting.camera.distance, 0.0, aim)
+    camera = Camera(size, sitting.camera.mm_per_px, sitting.camera.distance, 0.0, aim)
     linear, seen = expose(scene, illuminate(scene, Lamp()), camera, (0, 0, *size))
     rows, columns = np.flatnonzero(seen.any(axis=1)), np.flatnonzero(seen.any(axis=0))
-    pad = 4
-    rows_here = slice(max(0, rows[0] - pad), rows[-1] + pad)
-    columns_here = slice(max(0, columns[0] - pad), columns[-1] + pad)
-    left, upper = (float(at) for at in (obverse.region or (0, 0, 0, 0))[:2])
+    cut = slice(max(0, rows[0] - 4), rows[-1] + 4), slice(max(0, columns[0] - 4), columns[-1] + 4)
+    # the ends of the upper and lower edge stand above and below their places on the obverse
+    middle = obverse.camera.project(np.array([[aim[0], 0.0, 0.0]]))[0, 0]
+    start = float(middle - size[0] / 2 + cut[1].start)
+    paste(plate, linear[cut], seen[cut], _corner(face, seen[cut].shape, start, obverse))
+
+
+def _corner(face: EdgeFace, shape: tuple[int, ...], start: float, obverse: Shot) -> tuple[int, int]:
+    """Return an edge's left and upper corner on the plate; ``start`` is its left on the obverse's picture."""
+    tall, wide = shape
+    left, upper, _, height = obverse.region or (0, 0, 0, 0)
     around = obverse.camera.project(np.vstack([points for _, points in obverse.side.outline]))
-    low, high = around.min(axis=0) + [left, upper], around.max(axis=0) + [left, upper]
-    tall, wide = seen[rows_here, columns_here].shape
-    gap = 90
-    middle_y = (low[1] + high[1] - tall) / 2
-    # the edges lie beside the fragment as it lies itself: ends of the upper and lower edge above their places
-    place_x = left + obverse.camera.project(np.array([[aim[0], 0.0, 0.0]]))[0, 0] - size[0] / 2
-    start_x = place_x + columns_here.start
-    corner = {
-        "upper edge": (start_x, low[1] - gap - tall),
-        "lower edge": (start_x, upper + sitting.camera.size[1] + 20),
-        "left edge": (low[0] - gap - wide - 120, middle_y),
-        "right edge": (high[0] + gap, middle_y),
+    west, north, east, south = np.concatenate([around.min(axis=0), around.max(axis=0)]) + np.tile(
+        [left, upper], 2
+    )
+    gap, broken = 90, 120
+    place = {
+        "upper edge": (left + start, north - gap - tall),
+        "lower edge": (left + start, upper + height + 20),
+        # the broken face reaches out below the outline
+        "left edge": (west - gap - broken - wide, (north + south - tall) / 2),
+        "right edge": (east + gap, (north + south - tall) / 2),
     }[face]
-    paste(plate, linear[rows_here, columns_here], seen[rows_here, columns_here], (round(corner[0]), round(corner[1])))
+    return round(place[0]), round(place[1])
 
 
 def make(sitting: Sitting, folder: Path, *, picture: bool = True) -> None:

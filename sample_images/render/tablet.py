@@ -2,13 +2,12 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass, field, replace
+from dataclasses import dataclass, replace
 from typing import Literal
 
 import numpy as np
 import shapely
 
-from sample_images.render.bar import Bar
 from sample_images.render.clay import Clay
 from sample_images.render.grid import Field, Grid, Points, grid_over
 from sample_images.render.scribe import (
@@ -69,7 +68,6 @@ class Spec:
     faults: tuple[Fault, ...]
     exponents: tuple[float, float] = (4.6, 5.2)
     head_and_foot: tuple[float, float] = (8.0, 9.0)
-    marks: tuple[Bar, ...] = field(default=())
 
 
 @dataclass(frozen=True, eq=False)
@@ -214,10 +212,9 @@ def _write(
     horizontals = draw_horizontals(top + shift, number, hand, ends, rng)
     entries = []
     for row, line in enumerate(lines_here):
-        middle = top + (row + 0.5) * hand.pitch
         for column, content in enumerate(spec.columns):
             left, right = boundaries[column : column + 2]
-            y = _height_at(horizontals, row, (left + right) / 2, hand, middle)
+            y = _height_at(horizontals, row, (left + right) / 2, hand)
             x = float(np.interp(y, verticals[column].points[:, 1], verticals[column].points[:, 0]))
             x += 0.06 * (right - left) + abs(rng.normal(0, 0.25))
             start = np.array([x, y + rng.normal(0, 0.12)])
@@ -225,9 +222,9 @@ def _write(
     return verticals + horizontals, entries
 
 
-def _height_at(lines: list[Line], row: int, x: float, hand: Hand, middle: float) -> float:
+def _height_at(lines: list[Line], row: int, x: float, hand: Hand) -> float:
     """Return the middle of a line of writing at x: halfway between its rulings, or above where it stands."""
     at = [float(np.interp(x, line.points[:, 0], line.points[:, 1])) for line in lines[row : row + 2]]
     if hand.ruled_lines:
         return (at[0] + at[1]) / 2
-    return at[0] - 0.30 * hand.pitch if at else middle
+    return at[0] - 0.30 * hand.pitch

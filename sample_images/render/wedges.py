@@ -95,13 +95,13 @@ def groove(depth: Field, grid: Grid, line: Points, width: float, deep: float) ->
     if canvas[rows, columns].size == 0:
         return
     away = cv2.distanceTransform(canvas[rows, columns], cv2.DIST_L2, 5) / grid.px_per_mm
-    profile = deep * np.clip(1 - away / (width / 2), 0, 1)
+    profile = deep * (1 - np.clip(away / (width / 2), 0, 1) ** 1.4)
     np.maximum(depth[rows, columns], profile.astype(np.float32), out=depth[rows, columns])
 
 
 def relief(depth: Field, grid: Grid) -> Field:
     """Return the relief of all impressions: pits with soft lips where the clay was pushed aside."""
-    soft = blur(depth, max(0.035 * grid.px_per_mm, 0.3))
+    soft = blur(depth, max(0.045 * grid.px_per_mm, 0.3))
     pushed = blur(depth, max(0.22 * grid.px_per_mm, 0.3))
     lips = 0.30 * np.clip(pushed - soft, 0, None)
     return np.asarray(lips - soft, np.float32)
