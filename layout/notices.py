@@ -38,6 +38,12 @@ ASSUMPTIONS: dict[str, str] = {
 }
 
 WARNINGS: dict[str, str] = {
+    "outline.unsure": "the surviving edges do not determine the whole outline: only {percent} % of the draws of "
+    "its approximate posterior agree with the exact one",
+    "outline.reweighted": "the outline's posterior is far from the form it was drawn in ({percent} % effective): "
+    "the draws were weighted by the exact one",
+    "outline.break_outside": "the break lies outside every outline that fits the original edges: check which "
+    "pieces are original edge and which are break",
     "scale.disagree": "the sources of scale contradict one another ({sources}): their errors were enlarged "
     "{ratio} times; check the readings of the marks",
     "outline.crossing": "views[{view}]: outline[{first}] crosses outline[{second}] within a few pixels of "
