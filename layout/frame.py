@@ -451,7 +451,7 @@ def _no_scale(view: View) -> Missing:
     """Say why there is no scale and what would give one."""
     marks = len(view.scale.marks)
     return Missing(
-        f"{view.face}: scale",
+        "scale",
         f"needs two marks or more on one bar, a ppi, or a known length; has {marks} mark"
         + ("s on different bars" if marks > 1 else "" if marks == 1 else "s"),
     )

@@ -9,6 +9,11 @@ from __future__ import annotations
 from dataclasses import dataclass
 
 ASSUMPTIONS: dict[str, str] = {
+    "outline.asymmetry": "halves made by hand are taken to differ by {percent:g} % (standard uncertainty)",
+    "outline.shape": "the outline is taken to be smooth, rounded alike left and right, about as wide as high (give or "
+    "take half), and its edge to wobble by about 0.35 mm over 8 mm",
+    "lost.sides": "which side is lost was not given: {sides}, where no original edge is traced",
+    "margin.mirrored": "the margin on the lost side is taken to be as wide as the one that survives",
     "scale.pointing": "a traced point is taken to be good to {px:g} px (standard uncertainty)",
     "scale.thickness": "the thickness was not given: {mm:g} mm with a standard uncertainty of {sd:g} mm",
     "scale.below_face": "how far the bar lies below the face was not given: {mm:.1f} mm with a standard "
@@ -38,6 +43,18 @@ ASSUMPTIONS: dict[str, str] = {
 }
 
 WARNINGS: dict[str, str] = {
+    "pitch.ambiguous": "{face}: the lines can be numbered in more than one way: a pitch of {best} was taken, "
+    "possible too: {others}; trace a ruling between two neighbouring lines",
+    "lens.unused": "{face}: the lens file is not applied: the distortion of the lens is still in the numbers",
+    "outline.state": "{face}: edges marked abraded or doubtful were left out as evidence of shape",
+    "outline.proportion": "{face}: no original edge survives {side}: the height is not known, and the width "
+    "rests on what tablets are like",
+    "surface.flat": "lengths are taken along the flat of the face, although a convexity is given",
+    "evidence.unused": "the evidence from elsewhere ({sources}) is not yet weighed with the outline's",
+    "ranking.remains": "the remains at the break are not compared with the candidates",
+    "ranking.pool": "the pool of columns and the gaps of running text are not ranked",
+    "lost_space.negative": "in {percent} % of the draws nothing is lost: the reconstructed edge lies inside the "
+    "surviving boundary",
     "outline.unsure": "the surviving edges do not determine the whole outline: only {percent} % of the draws of "
     "its approximate posterior agree with the exact one",
     "outline.reweighted": "the outline's posterior is far from the form it was drawn in ({percent} % effective): "

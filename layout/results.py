@@ -119,9 +119,9 @@ class Reconstructed:
     axis: Axes
     outline: ReconstructedOutline
     width: Quantity
-    height: Quantity
-    area: Quantity
-    lost_area: Quantity
+    height: Quantity | None
+    area: Quantity | None
+    lost_area: Quantity | None
     lost_space: Quantity | None
     lost_space_by_side: dict[str, Quantity]
     margin: Quantity | None
@@ -149,7 +149,7 @@ class ColumnClearance:
 
 @dataclass(frozen=True)
 class ClearanceResult:
-    """This scribe's clearance: of each surviving column, typical, and its spread (sd of the logarithm)."""
+    """The scribe's clearance: of each surviving column, typical, and its spread (sd of the logarithm)."""
 
     columns: tuple[ColumnClearance, ...]
     typical: Quantity

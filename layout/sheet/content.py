@@ -167,14 +167,14 @@ def _whole(whole: Reconstructed | None) -> Section:
     """Return the tablet as inferred, and what speaks for its axis."""
     if whole is None:
         return Section("whole", "")
-    rows: list[Row] = [
-        ("width", whole.width.summary()),
-        ("height", whole.height.summary()),
-        ("area", whole.area.summary()),
-        ("lost area", whole.lost_area.summary()),
+    named = [
+        ("width", whole.width),
+        ("height", whole.height),
+        ("area", whole.area),
+        ("lost area", whole.lost_area),
+        ("lost space", whole.lost_space),
     ]
-    if whole.lost_space is not None:
-        rows.append(("lost space", whole.lost_space.summary()))
+    rows: list[Row] = [(name, quantity.summary()) for name, quantity in named if quantity is not None]
     if len(whole.lost_space_by_side) > 1:
         rows += [(f"lost on the {side}", space.summary()) for side, space in whole.lost_space_by_side.items()]
     if whole.margin is not None:

@@ -37,8 +37,8 @@ def summary(results: Results) -> tuple[str, ...]:
         survives = next((view.preserved for view in results.views if view.face == whole.face), None)
         kept = "" if survives is None else f", of which {_say(survives.width)} survive"
         sentences.append(
-            f"The tablet is inferred to have been {_say(whole.width)} wide{kept}, "
-            f"and {_say(whole.height)} high."
+            f"The tablet is inferred to have been {_say(whole.width)} wide{kept}"
+            + ("." if whole.height is None else f", and {_say(whole.height)} high.")
         )
         for side, space in whole.lost_space_by_side.items():
             sentences.append(f"On the {side} {_say(space)} of writing surface are lost.")
