@@ -123,6 +123,14 @@ class Outline:
         return np.asarray(_from_own(np.stack([x, y], axis=-1)[None], shape)[0])
 
 
+def feet(points: Floats, log_width: Floats, shape: Floats) -> Floats:
+    """Return the feet of the perpendiculars from points (P, 2) on one outline, (P, 2)."""
+    away, slopes = distances(points, log_width, shape)
+    # moving the centre by a unit towards a point brings it nearer by the normal's component
+    normal = -slopes[0][:, [X0, Y0]]
+    return np.asarray(points - away[0][:, None] * normal)
+
+
 def _halves(log_width: Floats, shape: Floats) -> tuple[Floats, Floats, Floats, Floats]:
     """Return left, right, upper, lower half extents for log widths (...,) and shapes (..., 8)."""
     share_left = 1 / (1 + np.exp(-shape[..., SIDES]))
@@ -246,16 +254,26 @@ class _Stations:
 
     @classmethod
     def of(cls, traced: Traced) -> _Stations:
-        """Average each piece's points into at most 60 stations."""
+        """Average each piece's points into at most 60 stations, correlated by the distance between them."""
         points, noise = [], []
         for _, piece in traced.pieces:
             for part in np.array_split(piece, min(STATIONS, len(piece))):
                 points.append(part.mean(axis=0))
                 noise.append(traced.pointing_mm / np.sqrt(len(part)))
-        place, sd = np.array(points), np.maximum(np.array(noise), 0.01)
+        place = np.array(points)
+        return cls.along(place, np.maximum(np.array(noise), 0.01), place)
+
+    @classmethod
+    def along(cls, points: Floats, noise: Floats, smooth: Floats) -> _Stations:
+        """Correlate stations by the distance between points (M, 2) of a smooth edge.
+
+        Between the traced points themselves the wobble would be part of the distance, and where it is steep,
+        a little more distance would explain it away.
+        """
+        place, sd = smooth, noise
         apart = np.hypot(*(place[:, None] - place[None]).transpose(2, 0, 1))
         values, bases = np.linalg.eigh(matern52(apart / LENGTHS_MM[:, None, None]) / np.outer(sd, sd))
-        return cls(place, sd, bases.transpose(0, 2, 1) / sd, np.maximum(values, 0.0))
+        return cls(points, sd, bases.transpose(0, 2, 1) / sd, np.maximum(values, 0.0))
 
 
 def matern52(ratio: Floats) -> Floats:
@@ -332,6 +350,10 @@ def fit_outline(
     seen = float(np.ptp(np.vstack([stations.points, traced.breaks]), axis=0)[0])
     log_width = np.linspace(np.log(0.97 * seen), np.log(WIDEST * seen), RUNGS)
     ladder, shape = _climb(stations, prior, log_width, start(log_width))
+    best = [int(ladder.log_marginal.argmax())]
+    smooth = feet(stations.points, log_width[best], shape[best])
+    stations = _Stations.along(stations.points, stations.noise, smooth)
+    ladder, shape = _climb(stations, prior, log_width, shape)
     log_width = _relaid(ladder)
     warm = np.stack([np.interp(log_width, ladder.log_width, column) for column in shape.T], axis=-1)
     ladder, shape = _climb(stations, prior, log_width, warm)
