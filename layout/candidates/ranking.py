@@ -11,7 +11,6 @@ from dataclasses import dataclass, replace
 import numpy as np
 
 from layout.candidates.width import CandidateWidth, Proposal, Space, log_mean, log_support, measure_candidate
-from layout.clearance import Clearance
 from layout.errors import CallError
 from layout.notices import Missing, Notice, assume
 from layout.quantity import Floats

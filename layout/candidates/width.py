@@ -42,7 +42,7 @@ class CandidateWidth:
     @property
     def required(self) -> Floats:
         """What all columns need together, in full digits, shape (N,)."""
-        return self.by_column.sum(axis=1)
+        return np.asarray(self.by_column.sum(axis=1))
 
 
 def measure_candidate(proposal: Proposal, widths: SignWidths) -> CandidateWidth:
