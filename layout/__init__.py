@@ -1,1 +1,58 @@
+"""How big a broken tablet was, how much its lost part held, and what would have fitted there.
+
+The public names are loaded when they are first used, so that importing the package is cheap.
+"""
+
+from __future__ import annotations
+
+from importlib import import_module
+from typing import TYPE_CHECKING
+
+if TYPE_CHECKING:
+    from layout.errors import CallError, LayoutError, PhotographError, RecordError
+    from layout.pipeline import measure
+    from layout.quantity import Quantity
+    from layout.record.check import check
+    from layout.record.files import parse, read, write
+    from layout.record.model import Record
+    from layout.results import Results
+
 __version__ = "0.1.0"
+
+__all__ = [
+    "CallError",
+    "LayoutError",
+    "PhotographError",
+    "Quantity",
+    "Record",
+    "RecordError",
+    "Results",
+    "check",
+    "measure",
+    "parse",
+    "read",
+    "write",
+]
+
+_HOMES = {
+    "CallError": "layout.errors",
+    "LayoutError": "layout.errors",
+    "PhotographError": "layout.errors",
+    "Quantity": "layout.quantity",
+    "Record": "layout.record.model",
+    "RecordError": "layout.errors",
+    "Results": "layout.results",
+    "check": "layout.record.check",
+    "measure": "layout.pipeline",
+    "parse": "layout.record.files",
+    "read": "layout.record.files",
+    "write": "layout.record.files",
+}
+
+
+def __getattr__(name: str) -> object:
+    """Load a public name from its module."""
+    if name not in _HOMES:
+        message = f"module 'layout' has no attribute {name!r}"
+        raise AttributeError(message)
+    return getattr(import_module(_HOMES[name]), name)

@@ -163,7 +163,7 @@ def rank(record: RecordFile, as_json: AsJson = False) -> None:
         message = "; ".join(reasons) or "names no candidates; propose some under candidates or pool"
         raise CallError(message, file=record)
     if as_json:
-        from layout.candidates.rank import decides
+        from layout.candidates.deciding import decides
 
         ranking = {"ranking": results.to_json()["ranking"], "decides": decides(results)}
         emit(json.dumps(ranking, ensure_ascii=False, indent=2, allow_nan=False) + "\n")

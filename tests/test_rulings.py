@@ -70,7 +70,7 @@ def test_lines_whose_rulings_are_missing_are_counted() -> None:
 
 def test_a_growing_pitch_shows_its_drift() -> None:
     k = np.arange(10)
-    lines = level(6 * k + 0.08 * (k - 4.5) ** 2 / 2, np.random.default_rng(4))
+    lines = level(6.0 * k + np.asarray(0.08 * (k - 4.5) ** 2 / 2, dtype=np.float64), np.random.default_rng(4))
     pitch = fit_pitch(lines, 1000, np.random.default_rng(2))
     assert pitch is not None
     assert pitch.drift is not None

@@ -45,7 +45,7 @@ def content_of(record: Record, results: Results, record_path: Path) -> Content:
     OSError
         If the record's file cannot be read for its hash.
     """
-    from layout.candidates.rank import decides
+    from layout.candidates.deciding import decides
     from layout.sheet.content import compose
 
     sha256 = hashlib.sha256(record_path.read_bytes()).hexdigest()
