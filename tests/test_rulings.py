@@ -55,7 +55,7 @@ def test_the_distance_of_two_lines_is_covered() -> None:
 
 
 def test_even_lines_give_their_spacing() -> None:
-    pitch = fit_pitch(level(np.arange(6) * 7.0, np.random.default_rng(1)), 1000, np.random.default_rng(2))
+    pitch = fit_pitch(level(np.linspace(0.0, 35.0, 6), np.random.default_rng(1)), 1000, np.random.default_rng(2))
     assert pitch is not None
     assert np.median(pitch.pitch) == pytest.approx(7.0, abs=0.05)
     assert pitch.alternatives == ()
@@ -70,7 +70,8 @@ def test_lines_whose_rulings_are_missing_are_counted() -> None:
 
 def test_a_growing_pitch_shows_its_drift() -> None:
     k = np.arange(10)
-    lines = level(6.0 * k + np.asarray(0.08 * (k - 4.5) ** 2 / 2, dtype=np.float64), np.random.default_rng(4))
+    heights: Floats = np.asarray(6.0 * k + 0.08 * (k - 4.5) ** 2 / 2, dtype=np.float64)
+    lines = level(heights, np.random.default_rng(4))
     pitch = fit_pitch(lines, 1000, np.random.default_rng(2))
     assert pitch is not None
     assert pitch.drift is not None
