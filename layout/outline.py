@@ -32,6 +32,8 @@ LENGTHS_MM = np.array([2.5, 5.0, 8.0, 13.0, 22.0])
 LENGTH_PRIOR = (np.log(8.0), 0.6)
 SIZES_MM = np.geomspace(0.06, 2.5, 14)
 SIZE_PRIOR = (np.log(0.35), 0.6)
+TYPICAL = (2, 7)
+"""The places of 8 mm and about half a millimetre on these grids."""
 ROUNDNESS_PRIOR = (np.log(3.5), 0.5)
 PROPORTION_SD = 0.5
 TURN_SD = np.deg2rad(2.5)
@@ -319,6 +321,13 @@ class _Ladder:
     log_det: Floats
 
     @property
+    def wobble(self) -> tuple[int, int]:
+        """The most probable length and size of the wobble, as places on their grids."""
+        over_rungs = np.exp(self.log_evidence - self.log_evidence.max()).sum(axis=0)
+        length, size = np.unravel_index(int(over_rungs.argmax()), over_rungs.shape)
+        return int(length), int(size)
+
+    @property
     def log_marginal(self) -> Floats:
         """The log width's marginal on the rungs, (G,)."""
         top = self.log_evidence.max()
@@ -349,14 +358,14 @@ def fit_outline(
     start, prior = _begin(traced, asymmetry)
     seen = float(np.ptp(np.vstack([stations.points, traced.breaks]), axis=0)[0])
     log_width = np.linspace(np.log(0.97 * seen), np.log(WIDEST * seen), RUNGS)
-    ladder, shape = _climb(stations, prior, log_width, start(log_width))
+    ladder, shape = _climb(stations, prior, log_width, start(log_width), TYPICAL)
     best = [int(ladder.log_marginal.argmax())]
     smooth = feet(stations.points, log_width[best], shape[best])
     stations = _Stations.along(stations.points, stations.noise, smooth)
-    ladder, shape = _climb(stations, prior, log_width, shape)
+    ladder, shape = _climb(stations, prior, log_width, shape, TYPICAL)
     log_width = _relaid(ladder)
     warm = np.stack([np.interp(log_width, ladder.log_width, column) for column in shape.T], axis=-1)
-    ladder, shape = _climb(stations, prior, log_width, warm)
+    ladder, shape = _climb(stations, prior, log_width, warm, ladder.wobble)
     outline, log_proposal = _draw(ladder, draws, rng)
     rows = rng.permutation(draws)[:CHECKED]
     log_weights = _log_exact(outline, stations, prior, rows) - log_proposal[rows]
@@ -413,11 +422,16 @@ class _Start:
         return shape
 
 
-def _climb(stations: _Stations, prior: _Prior, log_width: Floats, shape: Floats) -> tuple[_Ladder, Floats]:
-    """Fit the shape on every rung by damped Gauss-Newton, then take the ladder's evidence there."""
-    middle = (2, 7)  # 8 mm, about the typical size: where the modes are looked for
-    variance = SIZES_MM[middle[1]] ** 2 * stations.values[middle[0]] + 1
-    root = stations.whiten[middle[0]] / np.sqrt(variance)[:, None]
+def _climb(
+    stations: _Stations, prior: _Prior, log_width: Floats, shape: Floats, wobble: tuple[int, int]
+) -> tuple[_Ladder, Floats]:
+    """Fit the shape on every rung by damped Gauss-Newton, then take the ladder's evidence there.
+
+    ``wobble`` says for which length and size (their places on the grid) the modes are looked for.
+    """
+    length, size = wobble
+    variance = SIZES_MM[size] ** 2 * stations.values[length] + 1
+    root = stations.whiten[length] / np.sqrt(variance)[:, None]
     precision = 1 / prior.sd**2
     mean = prior.mean(log_width)
     limit = np.array([10.0, 10.0, 0.05, 0.2, 0.4, 0.4, 0.05, 0.05])
