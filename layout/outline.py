@@ -21,6 +21,7 @@ from dataclasses import dataclass
 from math import lgamma
 
 import numpy as np
+from numpy.typing import NDArray
 
 from layout.notices import Caveat, warn
 from layout.quantity import Floats
@@ -35,7 +36,7 @@ SIZE_PRIOR = (np.log(0.35), 0.6)
 TYPICAL = (2, 7)
 """The places of 8 mm and about half a millimetre on these grids."""
 ROUNDNESS_PRIOR = (np.log(3.5), 0.5)
-PROPORTION_SD = 0.5
+PROPORTION_SD = 0.4
 TURN_SD = np.deg2rad(2.5)
 PLACE_SD_MM = 500.0
 WIDEST = 6.0
@@ -43,9 +44,9 @@ WIDEST = 6.0
 CHECKED = 400
 ENOUGH, TOO_FEW = 0.5, 0.1
 
-X0, Y0, TURN, HEIGHT, UPPER, LOWER, SIDES, ENDS = range(8)
-"""Shape parameters beside the log width: centre, turn, log height, log n above and below, and the logarithms
-of left over right half-width and of lower over upper half-height."""
+X0, Y0, TURN, HEIGHT, UPPER, LOWER, SIDES, ENDS, WIDTH = range(9)
+"""Shape parameters beside the log width: centre, turn, log height, log n above and below, the logarithms
+of left over right half-width and of lower over upper half-height; then the log width itself."""
 
 
 @dataclass(frozen=True, eq=False)
@@ -175,7 +176,7 @@ def distances(points: Floats, log_width: Floats, shape: Floats) -> tuple[Floats,
     Returns
     -------
     tuple
-        Distances (G, P), positive outside; slopes (G, P, 8) in the shape parameters.
+        Distances (G, P), positive outside; slopes (G, P, 9) in the shape parameters and the log width.
     """
     cos, sin = np.cos(shape[:, TURN, None]), np.sin(shape[:, TURN, None])
     dx, dy = points[:, 0] - shape[:, X0, None], points[:, 1] - shape[:, Y0, None]
@@ -223,10 +224,10 @@ class _Implicit:
         )
 
     def slopes(self, x: Floats, y: Floats, shape: Floats, cos: Floats, sin: Floats) -> Floats:
-        """Return how the distance changes with the shape parameters, (G, P, 8)."""
+        """Return how the distance changes with the shape parameters and the log width, (G, P, 9)."""
         share_left = (1 / (1 + np.exp(-shape[:, SIDES])))[:, None]
         share_lower = (1 / (1 + np.exp(-shape[:, ENDS])))[:, None]
-        out = np.empty((*x.shape, 8))
+        out = np.empty((*x.shape, 9))
         out[..., X0] = -cos * self.fx + sin * self.fy
         out[..., Y0] = -sin * self.fx - cos * self.fy
         out[..., TURN] = y * self.fx - x * self.fy
@@ -235,6 +236,7 @@ class _Implicit:
         out[..., LOWER] = np.where(y < 0, 0.0, self.f_n)
         out[..., SIDES] = self.f_half_x * np.where(x < 0, 1 - share_left, -share_left)
         out[..., ENDS] = self.f_half_y * np.where(y < 0, -share_lower, 1 - share_lower)
+        out[..., WIDTH] = self.f_half_x
         return out / self.steep[..., None]
 
 
@@ -310,11 +312,12 @@ class _Prior:
 class _Ladder:
     """Gaussian posteriors of the shape on every rung x length x size, and their evidence.
 
-    ``log_width`` (G,); ``log_evidence`` (G, L, S); ``mean`` (G, L, S, 8); ``root`` (G, L, S, 8, 8) with
-    covariance root root'.
+    ``log_width`` and its ``log_prior`` (G,); ``log_evidence`` (G, L, S); ``mean`` (G, L, S, 8);
+    ``root`` (G, L, S, 8, 8) with covariance root root'.
     """
 
     log_width: Floats
+    log_prior: Floats
     log_evidence: Floats
     mean: Floats
     root: Floats
@@ -368,13 +371,13 @@ def fit_outline(
     ladder, shape = _climb(stations, prior, log_width, warm, ladder.wobble)
     outline, log_proposal = _draw(ladder, draws, rng)
     rows = rng.permutation(draws)[:CHECKED]
-    log_weights = _log_exact(outline, stations, prior, rows) - log_proposal[rows]
+    log_weights = _log_exact(outline, stations, prior, ladder, rows) - log_proposal[rows]
     effective = _effective_share(log_weights)
     if effective < TOO_FEW:
         return None, [warn("outline.unsure", percent=round(100 * effective))]
     weights, caveats = np.ones(draws), []
     if effective < ENOUGH:
-        log_weights = _log_exact(outline, stations, prior, np.arange(draws)) - log_proposal
+        log_weights = _log_exact(outline, stations, prior, ladder, np.arange(draws)) - log_proposal
         weights = np.exp(log_weights - log_weights.max())
         caveats.append(warn("outline.reweighted", percent=round(100 * effective)))
     weights = weights * _holds(outline, traced.breaks)
@@ -437,7 +440,7 @@ def _climb(
     limit = np.array([10.0, 10.0, 0.05, 0.2, 0.4, 0.4, 0.05, 0.05])
     for _ in range(STEPS):
         away, slopes = distances(stations.points, log_width, shape)
-        r, j = away @ root.T, root @ slopes
+        r, j = away @ root.T, root @ slopes[..., :WIDTH]
         a = j.transpose(0, 2, 1) @ j + np.diag(precision)
         b = (j.transpose(0, 2, 1) @ r[..., None])[..., 0] + precision * (shape - mean)
         step = np.linalg.solve(a, b[..., None])[..., 0]
@@ -448,24 +451,30 @@ def _climb(
 def _weigh(stations: _Stations, prior: _Prior, log_width: Floats, shape: Floats) -> _Ladder:
     """Return the Gaussian posterior and the evidence of every rung x length x size (Laplace)."""
     away, slopes = distances(stations.points, log_width, shape)
-    both = np.concatenate([slopes, away[..., None]], axis=-1)  # (G, M, 9)
-    turned = stations.whiten[:, None] @ both[None]  # (L, G, M, 9)
+    both = np.concatenate([slopes, away[..., None]], axis=-1)  # (G, M, 10)
+    turned = stations.whiten[:, None] @ both[None]  # (L, G, M, 10)
     variance = SIZES_MM[:, None] ** 2 * stations.values[:, None] + 1  # (L, S, M)
-    weighted = turned[:, None].transpose(0, 1, 2, 4, 3) / variance[:, :, None, None]  # (L, S, G, 9, M)
-    normal = weighted @ turned[:, None]  # (L, S, G, 9, 9)
+    weighted = turned[:, None].transpose(0, 1, 2, 4, 3) / variance[:, :, None, None]  # (L, S, G, 10, M)
+    normal = weighted @ turned[:, None]  # (L, S, G, 10, 10)
     off = shape - prior.mean(log_width)
     precision = 1 / prior.sd**2
     a = normal[..., :8, :8] + np.diag(precision)
-    b = normal[..., :8, 8] + precision * off
+    b = normal[..., :8, 9] + precision * off
     solved = np.linalg.solve(a, b[..., None])[..., 0]
-    quad = normal[..., 8, 8] + (precision * off**2).sum(axis=-1) - (b * solved).sum(axis=-1)
+    quad = normal[..., 9, 9] + (precision * off**2).sum(axis=-1) - (b * solved).sum(axis=-1)
     upper = np.linalg.cholesky(a)
     half_log_det = np.log(np.diagonal(upper, axis1=-2, axis2=-1)).sum(axis=-1)
     log_noise = 0.5 * np.log(variance).sum(axis=-1)[:, :, None]
-    evidence = -0.5 * quad - log_noise - half_log_det + _log_wobble_prior()[:, :, None]
+    across = normal[..., :8, WIDTH]
+    told = normal[..., WIDTH, WIDTH] - (across * np.linalg.solve(a, across[..., None])[..., 0]).sum(axis=-1)
+    # a wider tablet is told less sharply by the same fragment: the reference prior (Berger and Bernardo 1992,
+    # from memory) is the root of the information, without which intervals reach too far
+    log_prior = 0.5 * np.log(told[TYPICAL])
+    evidence = log_prior - 0.5 * quad - log_noise - half_log_det + _log_wobble_prior()[:, :, None]
     root = np.linalg.inv(upper).swapaxes(-1, -2)
     return _Ladder(
         log_width=log_width,
+        log_prior=log_prior,
         log_evidence=np.moveaxis(evidence, 2, 0),
         mean=np.moveaxis(shape - solved, 2, 0),
         root=np.moveaxis(root, 2, 0),
@@ -516,7 +525,9 @@ def _draw(ladder: _Ladder, draws: int, rng: np.random.Generator) -> tuple[Outlin
     return Outline(log_width, shape, SIZES_MM[size], LENGTHS_MM[length]), log_proposal
 
 
-def _log_exact(outline: Outline, stations: _Stations, prior: _Prior, rows: np.ndarray) -> Floats:
+def _log_exact(
+    outline: Outline, stations: _Stations, prior: _Prior, ladder: _Ladder, rows: NDArray[np.intp]
+) -> Floats:
     """Return the exact log posterior of some rows, up to a constant."""
     log_width, shape = outline.log_width[rows], outline.shape[rows]
     away, _ = distances(stations.points, log_width, shape)
@@ -529,7 +540,8 @@ def _log_exact(outline: Outline, stations: _Stations, prior: _Prior, rows: np.nd
         white = away[of] @ stations.whiten[at].T
         log_likelihood[of] = -0.5 * (white**2 / variance + np.log(variance)).sum(axis=1)
     off = (shape - prior.mean(log_width)) / prior.sd
-    return np.asarray(log_likelihood - 0.5 * (off**2).sum(axis=1) + _log_wobble_prior()[length, size])
+    log_prior = _log_wobble_prior()[length, size] + np.interp(log_width, ladder.log_width, ladder.log_prior)
+    return np.asarray(log_likelihood + log_prior - 0.5 * (off**2).sum(axis=1))
 
 
 def _effective_share(log_weights: Floats) -> float:
