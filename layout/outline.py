@@ -41,6 +41,7 @@ TURN_SD = np.deg2rad(2.5)
 PLACE_SD_MM = 500.0
 WIDEST = 6.0
 """How many times the surviving width the ladder reaches."""
+CLEAR_MM = 5.0
 CHECKED = 400
 ENOUGH, TOO_FEW = 0.5, 0.1
 
@@ -333,8 +334,7 @@ class _Ladder:
     @property
     def log_marginal(self) -> Floats:
         """The log width's marginal on the rungs, (G,)."""
-        top = self.log_evidence.max()
-        return np.asarray(top + np.log(np.exp(self.log_evidence - top).sum(axis=(1, 2))))
+        return np.asarray(np.logaddexp.reduce(self.log_evidence.reshape(len(self.log_width), -1), axis=1))
 
 
 def fit_outline(
@@ -380,7 +380,7 @@ def fit_outline(
         log_weights = _log_exact(outline, stations, prior, ladder, np.arange(draws)) - log_proposal
         weights = np.exp(log_weights - log_weights.max())
         caveats.append(warn("outline.reweighted", percent=round(100 * effective)))
-    weights = weights * _holds(outline, traced.breaks)
+    weights = weights * _holds(outline, _inner(traced.breaks, stations.points))
     if np.count_nonzero(weights) < TOO_FEW * draws:
         return None, [*caveats, warn("outline.break_outside")]
     return _resampled(outline, weights, rng), caveats
@@ -548,6 +548,17 @@ def _effective_share(log_weights: Floats) -> float:
     """Return the effective sample size over the sample size (Kong 1992)."""
     weights = np.exp(log_weights - log_weights.max())
     return float(weights.sum() ** 2 / (weights**2).sum() / len(weights))
+
+
+def _inner(breaks: Floats, edges: Floats) -> Floats:
+    """Return the break's points that stand clear of the edges.
+
+    Where the break meets an edge it lies on the wobbling outline, and says nothing about what is inside.
+    """
+    if len(breaks) == 0:
+        return breaks
+    apart = np.hypot(*(breaks[:, None] - edges[None]).transpose(2, 0, 1)).min(axis=1)
+    return np.asarray(breaks[apart > CLEAR_MM])
 
 
 def _holds(outline: Outline, breaks: Floats) -> Floats:
