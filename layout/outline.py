@@ -2,12 +2,13 @@
 
 The outline is two pairs of half superellipses about a vertical and a horizontal axis,
 
-    |X / a|^n + |Y / b|^n = 1,
+    |X / a|^p + |Y / b|^q = 1,
 
-with a of its own left and right, b above and below (hand-made halves differ), and n above and below (rounded
-differently); X, Y are turned by a small angle. The clay's edge and the hand that traced it wobble about it:
-the normal distances of the traced points are a Gaussian process with a Matern 5/2 correlation (Rasmussen and
-Williams 2006, eq. 4.17) plus independent errors of pointing. The break is no evidence of shape.
+with a of its own left and right, b above and below (hand-made halves differ), n = sqrt(p q) of its own above and
+below (rounded differently) and p / q near one; X, Y are turned by a small angle. The clay's edge and the hand that
+traced it wobble about it: the normal distances of the traced points are a Gaussian process with a Matern 5/2 or
+3/2 correlation (Rasmussen and Williams 2006, eq. 4.17) plus independent errors of pointing. The break is no
+evidence of shape.
 
 The posterior needs no sampler. On a ladder of widths all other shape parameters are fitted together
 (Gauss-Newton, all rungs at once); about each rung the residuals are linear, so that for every length and size
@@ -29,13 +30,15 @@ from layout.quantity import Floats
 STATIONS = 60
 RUNGS = 28
 STEPS = 12
-LENGTHS_MM = np.array([2.5, 5.0, 8.0, 13.0, 22.0])
+LENGTHS_MM = np.array([2.5, 5.0, 8.0, 13.0, 22.0, 4.0, 8.0, 16.0])
+ROUGH = np.array([0, 0, 0, 0, 0, 1, 1, 1])
 LENGTH_PRIOR = (np.log(8.0), 0.6)
 SIZES_MM = np.geomspace(0.06, 2.5, 14)
 SIZE_PRIOR = (np.log(0.35), 0.6)
 TYPICAL = (2, 7)
 """The places of 8 mm and about half a millimetre on these grids."""
 ROUNDNESS_PRIOR = (np.log(3.5), 0.5)
+ACROSS_SD = 0.1
 PROPORTION_SD = 0.4
 TURN_SD = np.deg2rad(2.5)
 PLACE_SD_MM = 500.0
@@ -45,9 +48,10 @@ CLEAR_MM = 5.0
 CHECKED = 400
 ENOUGH, TOO_FEW = 0.5, 0.1
 
-X0, Y0, TURN, HEIGHT, UPPER, LOWER, SIDES, ENDS, WIDTH = range(9)
+X0, Y0, TURN, HEIGHT, UPPER, LOWER, SIDES, ENDS, ACROSS = range(9)
 """Shape parameters beside the log width: centre, turn, log height, log n above and below, the logarithms
-of left over right half-width and of lower over upper half-height; then the log width itself."""
+of left over right half-width and of lower over upper half-height, and
+of sqrt(p / q)."""
 
 
 @dataclass(frozen=True, eq=False)
@@ -73,14 +77,14 @@ class Traced:
 class Outline:
     """Joint draws of the whole outline in the face frame at the nominal scale.
 
-    ``log_width`` has shape (N,), ``shape`` (N, 8) in the order of this module's parameters; ``size`` and
-    ``length`` are the wobble's, in mm, shape (N,).
+    ``log_width`` has shape (N,), ``shape`` (N, 9) in the order of this module's parameters; ``size`` is
+    the wobble's standard deviation in mm and ``kernel`` the place of its correlation on the list, shape (N,).
     """
 
     log_width: Floats
     shape: Floats
     size: Floats
-    length: Floats
+    kernel: NDArray[np.intp]
 
     @property
     def halves(self) -> tuple[Floats, Floats, Floats, Floats]:
@@ -103,9 +107,9 @@ class Outline:
         return _from_own(own, self.shape)
 
     def area(self) -> Floats:
-        """Return the area in mm2, shape (N,): quadrants of a b G(1 + 1/n)^2 / G(1 + 2/n)."""
+        """Return the area in mm2, shape (N,): quadrants of a b G(1 + 1/p) G(1 + 1/q) / G(1 + 1/p + 1/q)."""
         left, right, upper, lower = self.halves
-        of_upper, of_lower = _quadrant(np.exp(self.shape[:, UPPER])), _quadrant(np.exp(self.shape[:, LOWER]))
+        of_upper, of_lower = (_quadrant(*_exponents(self.shape, half)) for half in (UPPER, LOWER))
         return np.asarray((left + right) * (upper * of_upper + lower * of_lower))
 
     def polygon(self, quantile: float, points: int = 240) -> Floats:
@@ -121,9 +125,10 @@ class Outline:
         left, right, upper, lower = (float(half[0]) for half in _halves(log_width, shape))
         t = np.linspace(0, 2 * np.pi, points, endpoint=False)
         cos, sin = np.cos(t), np.sin(t)
-        n = np.where(sin < 0, np.exp(shape[0, UPPER]), np.exp(shape[0, LOWER]))
-        x = np.where(cos < 0, left, right) * np.sign(cos) * np.abs(cos) ** (2 / n)
-        y = np.where(sin < 0, upper, lower) * np.sign(sin) * np.abs(sin) ** (2 / n)
+        above, below = _exponents(shape[0], UPPER), _exponents(shape[0], LOWER)
+        p, q = (np.where(sin < 0, one, other) for one, other in zip(above, below, strict=True))
+        x = np.where(cos < 0, left, right) * np.sign(cos) * np.abs(cos) ** (2 / p)
+        y = np.where(sin < 0, upper, lower) * np.sign(sin) * np.abs(sin) ** (2 / q)
         return np.asarray(_from_own(np.stack([x, y], axis=-1)[None], shape)[0])
 
 
@@ -136,7 +141,7 @@ def feet(points: Floats, log_width: Floats, shape: Floats) -> Floats:
 
 
 def _halves(log_width: Floats, shape: Floats) -> tuple[Floats, Floats, Floats, Floats]:
-    """Return left, right, upper, lower half extents for log widths (...,) and shapes (..., 8)."""
+    """Return left, right, upper, lower half extents for log widths (...,) and shapes (..., 9)."""
     share_left = 1 / (1 + np.exp(-shape[..., SIDES]))
     share_lower = 1 / (1 + np.exp(-shape[..., ENDS]))
     width, height = np.exp(log_width), np.exp(shape[..., HEIGHT])
@@ -151,11 +156,21 @@ def _from_own(own: Floats, shape: Floats) -> Floats:
     return np.stack([x, y], axis=-1)
 
 
-def _quadrant(n: Floats) -> Floats:
-    """Return the area of a quadrant of the superellipse with unit half extents (exact, on a grid)."""
-    grid = np.geomspace(0.2, 60.0, 400)
-    area = [np.exp(2 * lgamma(1 + 1 / m) - lgamma(1 + 2 / m)) for m in grid]
-    return np.asarray(np.interp(np.log(n), np.log(grid), area))
+def _exponents(shape: Floats, half: int) -> tuple[Floats, Floats]:
+    """Return the exponents across and along, p and q, of the upper or the lower half."""
+    n, ratio = np.exp(shape[..., half]), np.exp(shape[..., ACROSS])
+    return n * ratio, n / ratio
+
+
+def _quadrant(p: Floats, q: Floats) -> Floats:
+    """Return the area of a quadrant with unit half extents."""
+    return np.exp(_log_gamma(1 + 1 / p) + _log_gamma(1 + 1 / q) - _log_gamma(1 + 1 / p + 1 / q))
+
+
+def _log_gamma(x: Floats) -> Floats:
+    """Return the logarithm of the gamma function, exact on a fine grid from 1 to 12."""
+    grid = np.linspace(1.0, 12.0, 4001)
+    return np.asarray(np.interp(x, grid, [lgamma(at) for at in grid]))
 
 
 # ---------------------------------------------------------------------------------- distances and slopes
@@ -164,20 +179,20 @@ def _quadrant(n: Floats) -> Floats:
 def distances(points: Floats, log_width: Floats, shape: Floats) -> tuple[Floats, Floats]:
     """Return normal distances of points from outlines, and their slopes in the parameters.
 
-    Two steps towards the foot of the perpendicular: F / |grad F| with F = (|u|^n + |v|^n)^(1/n) - 1, first at
-    the point, then at the foot that this gives.
+    Two steps towards the foot of the perpendicular: F / |grad F| with F = (|u|^p + |v|^q)^(1/n) - 1, first at the
+    point, then at the foot that this gives.
 
     Parameters
     ----------
     points
         Shape (P, 2), in mm of the face frame.
     log_width, shape
-        Shapes (G,) and (G, 8): G outlines.
+        Shapes (G,) and (G, 9): G outlines.
 
     Returns
     -------
     tuple
-        Distances (G, P), positive outside; slopes (G, P, 9) in the shape parameters and the log width.
+        Distances (G, P), positive outside; slopes (G, P, 9) in the shape parameters.
     """
     cos, sin = np.cos(shape[:, TURN, None]), np.sin(shape[:, TURN, None])
     dx, dy = points[:, 0] - shape[:, X0, None], points[:, 1] - shape[:, Y0, None]
@@ -200,18 +215,20 @@ class _Implicit:
     f_half_x: Floats  # by the logarithm of the half extent that the point lies on
     f_half_y: Floats
     f_n: Floats  # by log n
+    f_across: Floats  # by the exponents' ratio
 
     @classmethod
     def at(cls, x: Floats, y: Floats, log_width: Floats, shape: Floats) -> _Implicit:
-        """Evaluate F = (|u|^n + |v|^n)^(1/n) - 1."""
+        """Evaluate F = (|u|^p + |v|^q)^(1/n) - 1."""
         left, right, upper, lower = (half[:, None] for half in _halves(log_width, shape))
         a, b = np.where(x < 0, left, right), np.where(y < 0, upper, lower)
         n = np.exp(np.where(y < 0, shape[:, UPPER, None], shape[:, LOWER, None]))
         log_u = np.log(np.maximum(np.abs(x) / a, 1e-9))
         log_v = np.log(np.maximum(np.abs(y) / b, 1e-9))
-        log_g = np.logaddexp(n * log_u, n * log_v)
+        p, q = n * np.exp(shape[:, ACROSS, None]), n * np.exp(-shape[:, ACROSS, None])
+        log_g = np.logaddexp(p * log_u, q * log_v)
         radius = np.exp(log_g / n)
-        share_u, share_v = np.exp(n * log_u - log_g), np.exp(n * log_v - log_g)
+        share_u, share_v = np.exp(p * log_u - log_g) * p / n, np.exp(q * log_v - log_g) * q / n
         fx = radius * share_u / np.where(x < 0, np.minimum(x, -1e-9), np.maximum(x, 1e-9))
         fy = radius * share_v / np.where(y < 0, np.minimum(y, -1e-9), np.maximum(y, 1e-9))
         return cls(
@@ -222,10 +239,11 @@ class _Implicit:
             f_half_x=-radius * share_u,
             f_half_y=-radius * share_v,
             f_n=radius * (share_u * log_u + share_v * log_v - log_g / n),
+            f_across=radius * (share_u * log_u - share_v * log_v),
         )
 
     def slopes(self, x: Floats, y: Floats, shape: Floats, cos: Floats, sin: Floats) -> Floats:
-        """Return how the distance changes with the shape parameters and the log width, (G, P, 9)."""
+        """Return how the distance changes with the shape parameters, (G, P, 9)."""
         share_left = (1 / (1 + np.exp(-shape[:, SIDES])))[:, None]
         share_lower = (1 / (1 + np.exp(-shape[:, ENDS])))[:, None]
         out = np.empty((*x.shape, 9))
@@ -237,7 +255,7 @@ class _Implicit:
         out[..., LOWER] = np.where(y < 0, 0.0, self.f_n)
         out[..., SIDES] = self.f_half_x * np.where(x < 0, 1 - share_left, -share_left)
         out[..., ENDS] = self.f_half_y * np.where(y < 0, -share_lower, 1 - share_lower)
-        out[..., WIDTH] = self.f_half_x
+        out[..., ACROSS] = self.f_across
         return out / self.steep[..., None]
 
 
@@ -277,8 +295,20 @@ class _Stations:
         """
         place, sd = smooth, noise
         apart = np.hypot(*(place[:, None] - place[None]).transpose(2, 0, 1))
-        values, bases = np.linalg.eigh(matern52(apart / LENGTHS_MM[:, None, None]) / np.outer(sd, sd))
+        values, bases = np.linalg.eigh(_correlations(apart) / np.outer(sd, sd))
         return cls(points, sd, bases.transpose(0, 2, 1) / sd, np.maximum(values, 0.0))
+
+
+def _correlations(apart: Floats) -> Floats:
+    """Return the correlations of every wobble at distances (M, M), shape (L, M, M)."""
+    ratio = apart / LENGTHS_MM[:, None, None]
+    return np.where(ROUGH[:, None, None] == 1, matern32(ratio), matern52(ratio))
+
+
+def matern32(ratio: Floats) -> Floats:
+    """Return the Matern 3/2 correlation at a distance over the correlation length."""
+    s = np.sqrt(3) * ratio
+    return np.asarray((1 + s) * np.exp(-s))
 
 
 def matern52(ratio: Floats) -> Floats:
@@ -289,7 +319,7 @@ def matern52(ratio: Floats) -> Floats:
 
 @dataclass(frozen=True, eq=False)
 class _Prior:
-    """Gaussian prior of the shape parameters given the log width: mean (G, 8) and sd (8,)."""
+    """Gaussian prior of the shape parameters given the log width: mean (G, 9) and sd (9,)."""
 
     centre: Floats
     asymmetry: float
@@ -302,10 +332,20 @@ class _Prior:
 
     @property
     def sd(self) -> Floats:
-        """Standard deviations of the eight shape parameters."""
+        """Standard deviations of the nine shape parameters."""
         n = ROUNDNESS_PRIOR[1]
         return np.array(
-            [PLACE_SD_MM, PLACE_SD_MM, TURN_SD, PROPORTION_SD, n, n, self.asymmetry, self.asymmetry]
+            [
+                PLACE_SD_MM,
+                PLACE_SD_MM,
+                TURN_SD,
+                PROPORTION_SD,
+                n,
+                n,
+                self.asymmetry,
+                self.asymmetry,
+                ACROSS_SD,
+            ]
         )
 
 
@@ -313,12 +353,11 @@ class _Prior:
 class _Ladder:
     """Gaussian posteriors of the shape on every rung x length x size, and their evidence.
 
-    ``log_width`` and its ``log_prior`` (G,); ``log_evidence`` (G, L, S); ``mean`` (G, L, S, 8);
-    ``root`` (G, L, S, 8, 8) with covariance root root'.
+    ``log_width`` (G,); ``log_evidence`` (G, L, S); ``mean`` (G, L, S, 9);
+    ``root`` (G, L, S, 9, 9) with covariance root root'.
     """
 
     log_width: Floats
-    log_prior: Floats
     log_evidence: Floats
     mean: Floats
     root: Floats
@@ -371,13 +410,13 @@ def fit_outline(
     ladder, shape = _climb(stations, prior, log_width, warm, ladder.wobble)
     outline, log_proposal = _draw(ladder, draws, rng)
     rows = rng.permutation(draws)[:CHECKED]
-    log_weights = _log_exact(outline, stations, prior, ladder, rows) - log_proposal[rows]
+    log_weights = _log_exact(outline, stations, prior, rows) - log_proposal[rows]
     effective = _effective_share(log_weights)
     if effective < TOO_FEW:
         return None, [warn("outline.unsure", percent=round(100 * effective))]
     weights, caveats = np.ones(draws), []
     if effective < ENOUGH:
-        log_weights = _log_exact(outline, stations, prior, ladder, np.arange(draws)) - log_proposal
+        log_weights = _log_exact(outline, stations, prior, np.arange(draws)) - log_proposal
         weights = np.exp(log_weights - log_weights.max())
         caveats.append(warn("outline.reweighted", percent=round(100 * effective)))
     weights = weights * _holds(outline, _inner(traced.breaks, stations.points))
@@ -400,7 +439,7 @@ def _begin(traced: Traced, asymmetry: float) -> tuple[_Start, _Prior]:
     right = float(np.percentile(found["right"][:, 0], 90)) if "right" in found else None
     n = ROUNDNESS_PRIOR[0]
     middle = (top + bottom) / 2
-    centre = np.array([everything[:, 0].mean(), middle, 0.0, 0.0, n, n, 0.0, 0.0])
+    centre = np.array([everything[:, 0].mean(), middle, 0.0, 0.0, n, n, 0.0, 0.0, 0.0])
     return _Start(left, right, middle, np.log(height)), _Prior(centre, max(asymmetry, 1e-4))
 
 
@@ -419,7 +458,7 @@ class _Start:
             x0 = np.full_like(half, (self.left + self.right) / 2)
         else:
             x0 = self.right - half if self.right is not None else (self.left or 0.0) + half
-        shape = np.zeros((len(log_width), 8))
+        shape = np.zeros((len(log_width), 9))
         shape[:, X0], shape[:, Y0], shape[:, HEIGHT] = x0, self.middle, self.log_height
         shape[:, UPPER] = shape[:, LOWER] = ROUNDNESS_PRIOR[0]
         return shape
@@ -437,10 +476,10 @@ def _climb(
     root = stations.whiten[length] / np.sqrt(variance)[:, None]
     precision = 1 / prior.sd**2
     mean = prior.mean(log_width)
-    limit = np.array([10.0, 10.0, 0.05, 0.2, 0.4, 0.4, 0.05, 0.05])
+    limit = np.array([10.0, 10.0, 0.05, 0.2, 0.4, 0.4, 0.05, 0.05, 0.1])
     for _ in range(STEPS):
         away, slopes = distances(stations.points, log_width, shape)
-        r, j = away @ root.T, root @ slopes[..., :WIDTH]
+        r, j = away @ root.T, root @ slopes
         a = j.transpose(0, 2, 1) @ j + np.diag(precision)
         b = (j.transpose(0, 2, 1) @ r[..., None])[..., 0] + precision * (shape - mean)
         step = np.linalg.solve(a, b[..., None])[..., 0]
@@ -458,23 +497,17 @@ def _weigh(stations: _Stations, prior: _Prior, log_width: Floats, shape: Floats)
     normal = weighted @ turned[:, None]  # (L, S, G, 10, 10)
     off = shape - prior.mean(log_width)
     precision = 1 / prior.sd**2
-    a = normal[..., :8, :8] + np.diag(precision)
-    b = normal[..., :8, 9] + precision * off
+    a = normal[..., :9, :9] + np.diag(precision)
+    b = normal[..., :9, 9] + precision * off
     solved = np.linalg.solve(a, b[..., None])[..., 0]
     quad = normal[..., 9, 9] + (precision * off**2).sum(axis=-1) - (b * solved).sum(axis=-1)
     upper = np.linalg.cholesky(a)
     half_log_det = np.log(np.diagonal(upper, axis1=-2, axis2=-1)).sum(axis=-1)
     log_noise = 0.5 * np.log(variance).sum(axis=-1)[:, :, None]
-    across = normal[..., :8, WIDTH]
-    told = normal[..., WIDTH, WIDTH] - (across * np.linalg.solve(a, across[..., None])[..., 0]).sum(axis=-1)
-    # a wider tablet is told less sharply by the same fragment: the reference prior (Berger and Bernardo 1992,
-    # from memory) is the root of the information, without which intervals reach too far
-    log_prior = 0.5 * np.log(told[TYPICAL])
-    evidence = log_prior - 0.5 * quad - log_noise - half_log_det + _log_wobble_prior()[:, :, None]
+    evidence = -0.5 * quad - log_noise - half_log_det + _log_wobble_prior()[:, :, None]
     root = np.linalg.inv(upper).swapaxes(-1, -2)
     return _Ladder(
         log_width=log_width,
-        log_prior=log_prior,
         log_evidence=np.moveaxis(evidence, 2, 0),
         mean=np.moveaxis(shape - solved, 2, 0),
         root=np.moveaxis(root, 2, 0),
@@ -515,23 +548,21 @@ def _draw(ladder: _Ladder, draws: int, rng: np.random.Generator) -> tuple[Outlin
     length, size = np.divmod(cell, len(SIZES_MM))
     drift = np.gradient(ladder.mean, ladder.log_width, axis=0)
     where = (rung, length, size)
-    z = rng.standard_normal((draws, 8))
+    z = rng.standard_normal((draws, 9))
     mean = ladder.mean[where] + drift[where] * (log_width - ladder.log_width[rung])[:, None]
     shape = mean + np.einsum("nij,nj->ni", ladder.root[where], z)
     log_cell = np.log(np.maximum(flat[rung, cell], 1e-300))
     log_proposal = (
         np.interp(log_width, fine, log_p) - log_p.max() - log_norm + log_cell + ladder.log_det[where]
     ) - 0.5 * (z**2).sum(axis=1)
-    return Outline(log_width, shape, SIZES_MM[size], LENGTHS_MM[length]), log_proposal
+    return Outline(log_width, shape, SIZES_MM[size], length), log_proposal
 
 
-def _log_exact(
-    outline: Outline, stations: _Stations, prior: _Prior, ladder: _Ladder, rows: NDArray[np.intp]
-) -> Floats:
+def _log_exact(outline: Outline, stations: _Stations, prior: _Prior, rows: NDArray[np.intp]) -> Floats:
     """Return the exact log posterior of some rows, up to a constant."""
     log_width, shape = outline.log_width[rows], outline.shape[rows]
     away, _ = distances(stations.points, log_width, shape)
-    length = np.searchsorted(LENGTHS_MM, outline.length[rows] - 1e-9)
+    length = outline.kernel[rows]
     size = np.searchsorted(SIZES_MM, outline.size[rows] - 1e-9)
     log_likelihood = np.empty(len(rows))
     for at in range(len(LENGTHS_MM)):
@@ -540,8 +571,7 @@ def _log_exact(
         white = away[of] @ stations.whiten[at].T
         log_likelihood[of] = -0.5 * (white**2 / variance + np.log(variance)).sum(axis=1)
     off = (shape - prior.mean(log_width)) / prior.sd
-    log_prior = _log_wobble_prior()[length, size] + np.interp(log_width, ladder.log_width, ladder.log_prior)
-    return np.asarray(log_likelihood + log_prior - 0.5 * (off**2).sum(axis=1))
+    return np.asarray(log_likelihood - 0.5 * (off**2).sum(axis=1) + _log_wobble_prior()[length, size])
 
 
 def _effective_share(log_weights: Floats) -> float:
@@ -579,4 +609,4 @@ def _resampled(outline: Outline, weights: Floats, rng: np.random.Generator) -> O
     levels = np.cumsum(weights) / weights.sum()
     rows = np.minimum(np.searchsorted(levels, (np.arange(draws) + rng.random()) / draws), draws - 1)
     rows = rng.permutation(rows)
-    return Outline(outline.log_width[rows], outline.shape[rows], outline.size[rows], outline.length[rows])
+    return Outline(outline.log_width[rows], outline.shape[rows], outline.size[rows], outline.kernel[rows])
