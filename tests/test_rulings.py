@@ -55,7 +55,9 @@ def test_the_distance_of_two_lines_is_covered() -> None:
 
 
 def test_even_lines_give_their_spacing() -> None:
-    pitch = fit_pitch(level(np.linspace(0.0, 35.0, 6), np.random.default_rng(1)), 1000, np.random.default_rng(2))
+    pitch = fit_pitch(
+        level(np.linspace(0.0, 35.0, 6), np.random.default_rng(1)), 1000, np.random.default_rng(2)
+    )
     assert pitch is not None
     assert np.median(pitch.pitch) == pytest.approx(7.0, abs=0.05)
     assert pitch.alternatives == ()
