@@ -29,14 +29,14 @@ from layout.quantity import Floats
 
 STATIONS = 60
 RUNGS = 28
-STEPS = 12
+STEPS, WARM_STEPS = 12, 5
 LENGTHS_MM = np.array([2.5, 5.0, 8.0, 13.0, 22.0, 4.0, 8.0, 16.0])
-ROUGH = np.array([0, 0, 0, 0, 0, 1, 1, 1])
+ROUGH = (False, False, False, False, False, True, True, True)
 LENGTH_PRIOR = (np.log(8.0), 0.6)
-SIZES_MM = np.geomspace(0.06, 2.5, 14)
+SIZES_MM = np.geomspace(0.06, 2.4, 11)
 SIZE_PRIOR = (np.log(0.35), 0.6)
-TYPICAL = (2, 7)
-"""The places of 8 mm and about half a millimetre on these grids."""
+TYPICAL_KERNEL, TYPICAL_SIZE = 2, 5
+"""The places of 8 mm and of 0.38 mm on these lists."""
 ROUNDNESS_PRIOR = (np.log(3.5), 0.5)
 ACROSS_SD = 0.1
 PROPORTION_SD = 0.4
@@ -45,6 +45,8 @@ PLACE_SD_MM = 500.0
 WIDEST = 6.0
 """How many times the surviving width the ladder reaches."""
 CLEAR_MM = 5.0
+GAMMA_AT = np.linspace(1.0, 12.0, 4001)
+LOG_GAMMA = np.array([lgamma(x) for x in GAMMA_AT])
 CHECKED = 400
 ENOUGH, TOO_FEW = 0.5, 0.1
 
@@ -168,9 +170,8 @@ def _quadrant(p: Floats, q: Floats) -> Floats:
 
 
 def _log_gamma(x: Floats) -> Floats:
-    """Return the logarithm of the gamma function, exact on a fine grid from 1 to 12."""
-    grid = np.linspace(1.0, 12.0, 4001)
-    return np.asarray(np.interp(x, grid, [lgamma(at) for at in grid]))
+    """Return the logarithm of the gamma function for x from 1 to 12."""
+    return np.asarray(np.interp(x, GAMMA_AT, LOG_GAMMA))
 
 
 # ---------------------------------------------------------------------------------- distances and slopes
@@ -272,37 +273,38 @@ class _Stations:
 
     points: Floats
     noise: Floats
+    kernels: NDArray[np.intp]
     whiten: Floats
     values: Floats
 
     @classmethod
     def of(cls, traced: Traced) -> _Stations:
-        """Average each piece's points into at most 60 stations, correlated by the distance between them."""
+        """Average each piece's points into at most 60 stations, under the typical wobble only."""
         points, noise = [], []
         for _, piece in traced.pieces:
             for part in np.array_split(piece, min(STATIONS, len(piece))):
                 points.append(part.mean(axis=0))
                 noise.append(traced.pointing_mm / np.sqrt(len(part)))
         place = np.array(points)
-        return cls.along(place, np.maximum(np.array(noise), 0.01), place)
+        return cls.along(place, np.maximum(np.array(noise), 0.01), place, np.array([TYPICAL_KERNEL]))
 
     @classmethod
-    def along(cls, points: Floats, noise: Floats, smooth: Floats) -> _Stations:
+    def along(cls, points: Floats, noise: Floats, smooth: Floats, kernels: NDArray[np.intp]) -> _Stations:
         """Correlate stations by the distance between points (M, 2) of a smooth edge.
 
         Between the traced points themselves the wobble would be part of the distance, and where it is steep,
         a little more distance would explain it away.
         """
-        place, sd = smooth, noise
-        apart = np.hypot(*(place[:, None] - place[None]).transpose(2, 0, 1))
-        values, bases = np.linalg.eigh(_correlations(apart) / np.outer(sd, sd))
-        return cls(points, sd, bases.transpose(0, 2, 1) / sd, np.maximum(values, 0.0))
+        apart = np.hypot(*(smooth[:, None] - smooth[None]).transpose(2, 0, 1))
+        values, bases = np.linalg.eigh(_correlations(apart, kernels) / np.outer(noise, noise))
+        return cls(points, noise, kernels, bases.transpose(0, 2, 1) / noise, np.maximum(values, 0.0))
 
 
-def _correlations(apart: Floats) -> Floats:
-    """Return the correlations of every wobble at distances (M, M), shape (L, M, M)."""
-    ratio = apart / LENGTHS_MM[:, None, None]
-    return np.where(ROUGH[:, None, None] == 1, matern32(ratio), matern52(ratio))
+def _correlations(apart: Floats, kernels: NDArray[np.intp]) -> Floats:
+    """Return the correlations of some wobbles at distances (M, M), shape (L, M, M)."""
+    return np.stack(
+        [(matern32 if ROUGH[kernel] else matern52)(apart / LENGTHS_MM[kernel]) for kernel in kernels]
+    )
 
 
 def matern32(ratio: Floats) -> Floats:
@@ -400,14 +402,16 @@ def fit_outline(
     start, prior = _begin(traced, asymmetry)
     seen = float(np.ptp(np.vstack([stations.points, traced.breaks]), axis=0)[0])
     log_width = np.linspace(np.log(0.97 * seen), np.log(WIDEST * seen), RUNGS)
-    ladder, shape = _climb(stations, prior, log_width, start(log_width), TYPICAL)
-    best = [int(ladder.log_marginal.argmax())]
+    shape = _climb(stations, prior, log_width, start(log_width), (0, TYPICAL_SIZE), STEPS)
+    best = [int(_weigh(stations, prior, log_width, shape).log_marginal.argmax())]
     smooth = feet(stations.points, log_width[best], shape[best])
-    stations = _Stations.along(stations.points, stations.noise, smooth)
-    ladder, shape = _climb(stations, prior, log_width, shape, TYPICAL)
+    stations = _Stations.along(stations.points, stations.noise, smooth, np.arange(len(LENGTHS_MM)))
+    shape = _climb(stations, prior, log_width, shape, (TYPICAL_KERNEL, TYPICAL_SIZE), WARM_STEPS)
+    ladder = _weigh(stations, prior, log_width, shape)
     log_width = _relaid(ladder)
     warm = np.stack([np.interp(log_width, ladder.log_width, column) for column in shape.T], axis=-1)
-    ladder, shape = _climb(stations, prior, log_width, warm, ladder.wobble)
+    shape = _climb(stations, prior, log_width, warm, ladder.wobble, WARM_STEPS)
+    ladder = _weigh(stations, prior, log_width, shape)
     outline, log_proposal = _draw(ladder, draws, rng)
     rows = rng.permutation(draws)[:CHECKED]
     log_weights = _log_exact(outline, stations, prior, rows) - log_proposal[rows]
@@ -465,26 +469,23 @@ class _Start:
 
 
 def _climb(
-    stations: _Stations, prior: _Prior, log_width: Floats, shape: Floats, wobble: tuple[int, int]
-) -> tuple[_Ladder, Floats]:
-    """Fit the shape on every rung by damped Gauss-Newton, then take the ladder's evidence there.
-
-    ``wobble`` says for which length and size (their places on the grid) the modes are looked for.
-    """
+    stations: _Stations, prior: _Prior, log_width: Floats, shape: Floats, wobble: tuple[int, int], steps: int
+) -> Floats:
+    """Fit the shape on every rung under one wobble (its kernel's and size's place) by damped Gauss-Newton."""
     length, size = wobble
     variance = SIZES_MM[size] ** 2 * stations.values[length] + 1
     root = stations.whiten[length] / np.sqrt(variance)[:, None]
     precision = 1 / prior.sd**2
     mean = prior.mean(log_width)
     limit = np.array([10.0, 10.0, 0.05, 0.2, 0.4, 0.4, 0.05, 0.05, 0.1])
-    for _ in range(STEPS):
+    for _ in range(steps):
         away, slopes = distances(stations.points, log_width, shape)
         r, j = away @ root.T, root @ slopes
         a = j.transpose(0, 2, 1) @ j + np.diag(precision)
         b = (j.transpose(0, 2, 1) @ r[..., None])[..., 0] + precision * (shape - mean)
         step = np.linalg.solve(a, b[..., None])[..., 0]
         shape = shape - step / np.maximum(1.0, np.abs(step / limit).max(axis=1, keepdims=True))
-    return _weigh(stations, prior, log_width, shape), shape
+    return shape
 
 
 def _weigh(stations: _Stations, prior: _Prior, log_width: Floats, shape: Floats) -> _Ladder:
@@ -504,7 +505,7 @@ def _weigh(stations: _Stations, prior: _Prior, log_width: Floats, shape: Floats)
     upper = np.linalg.cholesky(a)
     half_log_det = np.log(np.diagonal(upper, axis1=-2, axis2=-1)).sum(axis=-1)
     log_noise = 0.5 * np.log(variance).sum(axis=-1)[:, :, None]
-    evidence = -0.5 * quad - log_noise - half_log_det + _log_wobble_prior()[:, :, None]
+    evidence = -0.5 * quad - log_noise - half_log_det + _log_wobble_prior()[stations.kernels][:, :, None]
     root = np.linalg.inv(upper).swapaxes(-1, -2)
     return _Ladder(
         log_width=log_width,

@@ -71,6 +71,7 @@ def reconstruct(
         notices.append(warn("outline.proportion", face=measured.view.face, side=side))
         for result in ("height", "area", "lost_area"):
             notices.append(Missing(f"reconstructed.{result}", f"needs original edge {side}"))
+    area = _area(outline, measured.mapped) if bounded else None
     lost = None if len(by_side) != 1 else next(iter(by_side.values()))
     reconstructed = Reconstructed(
         face=measured.view.face,
@@ -78,8 +79,10 @@ def reconstruct(
         outline=_drawn(outline, measured),
         width=Quantity("mm", extent.width),
         height=Quantity("mm", extent.height) if bounded else None,
-        area=_area(outline, measured.mapped) if bounded else None,
-        lost_area=_lost_area(outline, measured) if bounded else None,
+        area=None if area is None else Quantity("mm2", area),
+        lost_area=None
+        if area is None or measured.preserved is None
+        else Quantity("mm2", area - measured.preserved.area.draws),
         lost_space=None if lost is None else Quantity("mm", lost),
         lost_space_by_side={side: Quantity("mm", space) for side, space in by_side.items()},
         margin=None if margin is None else Quantity("mm", margin),
@@ -170,14 +173,6 @@ def _ratio_at_centre(outline: Outline, mapped: Mapped) -> Floats:
     return mapped.outline_ratio(np.median(outline.shape[:, [X0, Y0]], axis=0))
 
 
-def _area(outline: Outline, mapped: Mapped) -> Quantity:
-    """Return the whole area."""
-    return Quantity("mm2", outline.area() * _ratio_at_centre(outline, mapped) ** 2)
-
-
-def _lost_area(outline: Outline, measured: MeasuredView) -> Quantity | None:
-    """Return the area that is gone; None where the fragment's outline is still open."""
-    if measured.preserved is None:
-        return None
-    whole = outline.area() * _ratio_at_centre(outline, measured.mapped) ** 2
-    return Quantity("mm2", whole - measured.preserved.area.draws)
+def _area(outline: Outline, mapped: Mapped) -> Floats:
+    """Return the whole area in mm2, shape (N,)."""
+    return np.asarray(outline.area() * _ratio_at_centre(outline, mapped) ** 2)
