@@ -29,7 +29,7 @@ from layout.quantity import Floats
 
 STATIONS = 60
 RUNGS = 28
-STEPS, WARM_STEPS = 12, 5
+STEPS, WARM_STEPS = 12, 8
 LENGTHS_MM = np.array([2.5, 5.0, 8.0, 13.0, 22.0, 4.0, 8.0, 16.0])
 ROUGH = (False, False, False, False, False, True, True, True)
 LENGTH_PRIOR = (np.log(8.0), 0.6)
@@ -38,7 +38,7 @@ SIZE_PRIOR = (np.log(0.35), 0.6)
 TYPICAL_KERNEL, TYPICAL_SIZE = 2, 5
 """The places of 8 mm and of 0.38 mm on these lists."""
 ROUNDNESS_PRIOR = (np.log(3.5), 0.5)
-ACROSS_SD = 0.1
+ACROSS_SD = 0.07
 PROPORTION_SD = 0.4
 TURN_SD = np.deg2rad(2.5)
 PLACE_SD_MM = 500.0
