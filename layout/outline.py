@@ -19,7 +19,6 @@ width, a wobble, then the Gaussian rest; some rows are checked against the exact
 from __future__ import annotations
 
 from dataclasses import dataclass
-from math import lgamma
 
 import numpy as np
 from numpy.typing import NDArray
@@ -45,10 +44,9 @@ PLACE_SD_MM = 500.0
 WIDEST = 6.0
 """How many times the surviving width the ladder reaches."""
 CLEAR_MM = 5.0
-GAMMA_AT = np.linspace(1.0, 12.0, 4001)
-LOG_GAMMA = np.array([lgamma(x) for x in GAMMA_AT])
 CHECKED = 400
 ENOUGH, TOO_FEW = 0.5, 0.1
+IMPOSSIBLE = 1e-3
 
 X0, Y0, TURN, HEIGHT, UPPER, LOWER, SIDES, ENDS, ACROSS = range(9)
 """Shape parameters beside the log width: centre, turn, log height, log n above and below, the logarithms
@@ -170,8 +168,10 @@ def _quadrant(p: Floats, q: Floats) -> Floats:
 
 
 def _log_gamma(x: Floats) -> Floats:
-    """Return the logarithm of the gamma function for x from 1 to 12."""
-    return np.asarray(np.interp(x, GAMMA_AT, LOG_GAMMA))
+    """Return the logarithm of the gamma function for x of 1 or more: Stirling's series at x + 8 (from memory)."""
+    z = x + 8
+    series = (z - 0.5) * np.log(z) - z + 0.5 * np.log(2 * np.pi) + 1 / (12 * z) - 1 / (360 * z**3)
+    return np.asarray(series - np.log(np.prod([x + step for step in range(8)], axis=0)))
 
 
 # ---------------------------------------------------------------------------------- distances and slopes
@@ -423,8 +423,9 @@ def fit_outline(
         log_weights = _log_exact(outline, stations, prior, np.arange(draws)) - log_proposal
         weights = np.exp(log_weights - log_weights.max())
         caveats.append(warn("outline.reweighted", percent=round(100 * effective)))
-    weights = weights * _holds(outline, _inner(traced.breaks, stations.points))
-    if np.count_nonzero(weights) < TOO_FEW * draws:
+    holds = _holds(outline, _inner(traced.breaks, stations.points))
+    weights = weights * holds
+    if holds.max() < IMPOSSIBLE or _effective_share(np.log(weights)) < TOO_FEW**2:
         return None, [*caveats, warn("outline.break_outside")]
     return _resampled(outline, weights, rng), caveats
 
