@@ -27,15 +27,15 @@ from layout.notices import Caveat, warn
 from layout.quantity import Floats
 
 STATIONS = 60
-RUNGS = 28
+FIRST_RUNGS, RUNGS = 18, 22
 STEPS, WARM_STEPS = 12, 8
-LENGTHS_MM = np.array([2.5, 5.0, 8.0, 13.0, 22.0, 4.0, 8.0, 16.0])
-ROUGH = (False, False, False, False, False, True, True, True)
+LENGTHS_MM = np.array([3.0, 5.5, 9.0, 16.0, 5.0, 12.0])
+ROUGH = (False, False, False, False, True, True)
 LENGTH_PRIOR = (np.log(8.0), 0.6)
 SIZES_MM = np.geomspace(0.06, 2.4, 11)
 SIZE_PRIOR = (np.log(0.35), 0.6)
 TYPICAL_KERNEL, TYPICAL_SIZE = 2, 5
-"""The places of 8 mm and of 0.38 mm on these lists."""
+"""The places of 9 mm and of 0.38 mm on these lists."""
 ROUNDNESS_PRIOR = (np.log(3.5), 0.5)
 ACROSS_SD = 0.07
 PROPORTION_SD = 0.4
@@ -44,9 +44,9 @@ PLACE_SD_MM = 500.0
 WIDEST = 6.0
 """How many times the surviving width the ladder reaches."""
 CLEAR_MM = 5.0
-CHECKED = 400
+CHECKED = 300
 ENOUGH, TOO_FEW = 0.5, 0.1
-IMPOSSIBLE = 1e-3
+IMPOSSIBLE, SURE = 1e-3, 0.9999
 
 X0, Y0, TURN, HEIGHT, UPPER, LOWER, SIDES, ENDS, ACROSS = range(9)
 """Shape parameters beside the log width: centre, turn, log height, log n above and below, the logarithms
@@ -227,9 +227,11 @@ class _Implicit:
         log_u = np.log(np.maximum(np.abs(x) / a, 1e-9))
         log_v = np.log(np.maximum(np.abs(y) / b, 1e-9))
         p, q = n * np.exp(shape[:, ACROSS, None]), n * np.exp(-shape[:, ACROSS, None])
-        log_g = np.logaddexp(p * log_u, q * log_v)
+        power_u, power_v = np.exp(p * log_u), np.exp(q * log_v)
+        g = power_u + power_v
+        log_g = np.log(g)
         radius = np.exp(log_g / n)
-        share_u, share_v = np.exp(p * log_u - log_g) * p / n, np.exp(q * log_v - log_g) * q / n
+        share_u, share_v = power_u * p / (g * n), power_v * q / (g * n)
         fx = radius * share_u / np.where(x < 0, np.minimum(x, -1e-9), np.maximum(x, 1e-9))
         fy = radius * share_v / np.where(y < 0, np.minimum(y, -1e-9), np.maximum(y, 1e-9))
         return cls(
@@ -401,7 +403,7 @@ def fit_outline(
     stations = _Stations.of(traced)
     start, prior = _begin(traced, asymmetry)
     seen = float(np.ptp(np.vstack([stations.points, traced.breaks]), axis=0)[0])
-    log_width = np.linspace(np.log(0.97 * seen), np.log(WIDEST * seen), RUNGS)
+    log_width = np.linspace(np.log(0.97 * seen), np.log(WIDEST * seen), FIRST_RUNGS)
     shape = _climb(stations, prior, log_width, start(log_width), (0, TYPICAL_SIZE), STEPS)
     best = [int(_weigh(stations, prior, log_width, shape).log_marginal.argmax())]
     smooth = feet(stations.points, log_width[best], shape[best])
@@ -597,11 +599,19 @@ def _holds(outline: Outline, breaks: Floats) -> Floats:
     """Return how probable it is, row by row, that the break lies inside the wobbling outline, (N,)."""
     if len(breaks) == 0:
         return np.ones(len(outline.log_width))
+    narrow = np.argsort(outline.log_width)[: max(len(outline.log_width) // 100, 10)]
+    if _inside(breaks, outline, narrow).min() > SURE:
+        return np.ones(len(outline.log_width))
+    return _inside(breaks, outline, np.arange(len(outline.log_width)))
+
+
+def _inside(breaks: Floats, outline: Outline, rows: NDArray[np.intp]) -> Floats:
+    """Return how probable it is that the break lies inside the outline in some rows."""
     directions = np.linspace(0, 2 * np.pi, 32, endpoint=False)
     outermost = np.unique(np.argmax(breaks @ np.array([np.cos(directions), np.sin(directions)]), axis=0))
-    away, _ = distances(breaks[outermost], outline.log_width, outline.shape)
+    away, _ = distances(breaks[outermost], outline.log_width[rows], outline.shape[rows])
     # the logistic form of the normal distribution (Bowling et al. 2009) is near enough for a soft wall
-    z = -away.max(axis=1) / outline.size
+    z = -away.max(axis=1) / outline.size[rows]
     return np.asarray(1 / (1 + np.exp(-np.clip(1.702 * z, -40, 40))))
 
 

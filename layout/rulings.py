@@ -104,9 +104,11 @@ def fit_lines(
     cell = rng.choice(weight.size, size=draws, p=weight / weight.sum())
     lines = []
     for (name, runs, points), trace, fit in zip(traces, prepared, fits, strict=True):
-        z = rng.standard_normal((draws, 2))
-        moved = fit.mean[cell] + (fit.root[cell] @ z[..., None])[..., 0]
-        lines.append(_line(name, runs, points, trace, moved))
+        z = rng.standard_normal((2, draws))
+        (l00, l10), l11 = fit.root[cell, :, 0].T, fit.root[cell, 1, 1]
+        offset = fit.mean[cell, 0] + l00 * z[0]
+        slope = fit.mean[cell, 1] + l10 * z[0] + l11 * z[1]
+        lines.append(_line(name, runs, points, trace, (offset, slope)))
     return lines
 
 
@@ -159,14 +161,12 @@ def _fit_given_wobble(trace: _Trace) -> _GivenWobble:
     )
 
 
-def _line(name: str, runs: str, points: Floats, trace: _Trace, moved: Floats) -> Line:
+def _line(name: str, runs: str, points: Floats, trace: _Trace, moved: tuple[Floats, Floats]) -> Line:
     """Bring a line's draws (offset and slope about its own direction) back to the face frame."""
     run, side = (1, 0) if runs == "vertical" else (0, 1)
-    angle = np.arctan(moved[:, 1])
     normal = np.array([-trace.direction[1], trace.direction[0]])
-    direction = np.cos(angle)[:, None] * trace.direction + np.sin(angle)[:, None] * normal
-    at = trace.centroid + moved[:, :1] * normal
-    slope = direction[:, side] / direction[:, run]
+    shifted, turned = moved
+    slope = (trace.direction[side] + turned * normal[side]) / (trace.direction[run] + turned * normal[run])
     middle = float(trace.centroid[run])
     distances = (points - trace.centroid) @ normal
     dof = len(points) - 2
@@ -175,7 +175,7 @@ def _line(name: str, runs: str, points: Floats, trace: _Trace, moved: Floats) ->
         runs=runs,
         reach=(float(points[:, run].min()), float(points[:, run].max())),
         middle=middle,
-        offset=at[:, side] + slope * (middle - at[:, run]),
+        offset=trace.centroid[side] + shifted * (normal[side] - slope * normal[run]),
         slope=slope,
         scatter_mm=float(np.sqrt((distances**2).sum() / dof)) if dof > 0 else None,
     )
