@@ -84,8 +84,8 @@ def find_widest(entries: Sequence[SignCounts], widths: SignWidths) -> Floats:
     Floats
         In full digits, shape (N,); zero where nothing is written.
     """
-    widest: Floats = widths.need(_undominated(np.array(entries, dtype=np.float64))).max(axis=1)
-    return widest
+    # entries first: a maximum over rows of contiguous draws is several times faster
+    return np.asarray((_undominated(np.array(entries, dtype=np.float64)) @ widths.ratios.T).max(axis=0))
 
 
 def _undominated(counts: Floats) -> Floats:

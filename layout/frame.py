@@ -14,6 +14,7 @@ axis, where s = (n_z - h k) / (n_z + k n.t); k = 0 is a flatbed scanner.
 from __future__ import annotations
 
 from dataclasses import dataclass
+from functools import cached_property
 from typing import TYPE_CHECKING
 
 import numpy as np
@@ -36,21 +37,55 @@ POINTING_DOF = 10.0
 
 
 @dataclass(frozen=True, eq=False)
+class Plane:
+    """A plane of the scene, parallel to that of the bar: how points map to it, draw by draw.
+
+    Parameters
+    ----------
+    homography
+        Shape (3, 3, N): from pixels, or from mm of a frame, to mm from the foot of the optical axis, x right, y down.
+    nominal_mm_per_px
+        The scale at which shapes in this plane are fitted.
+    """
+
+    homography: Floats
+    nominal_mm_per_px: float
+
+    def map(self, points: Floats) -> Floats:
+        """Map points, shape (P, 2), or (N, P, 2) with draws of their own, to mm of the plane, (N, P, 2)."""
+        x, y = points[..., 0], points[..., 1]
+        mapped = (by_x[:, None] * x + by_y[:, None] * y + at[:, None] for by_x, by_y, at in self.homography)
+        mm_x, mm_y, w = mapped
+        return np.stack([mm_x / w, mm_y / w], axis=-1)
+
+    def local(self, at: Floats) -> Floats:
+        """Return how many mm a unit is around one point, (N,): the geometric mean of all directions."""
+        by_x, by_y, alone = self.homography[2]
+        # a homography's Jacobian has the determinant det H / w^3
+        return np.asarray(np.sqrt(np.abs(self._determinant / (by_x * at[0] + by_y * at[1] + alone) ** 3)))
+
+    def seen_from(self, affine: Floats) -> Plane:
+        """Return the map from other coordinates that a (3, 3) matrix turns into those of this one."""
+        return Plane(np.einsum("ijn,jk->ikn", self.homography, affine), self.nominal_mm_per_px)
+
+    @cached_property
+    def _determinant(self) -> Floats:
+        one, other, third = self.homography
+        return np.asarray((one * np.cross(other, third, axis=0)).sum(axis=0))
+
+
+@dataclass(frozen=True, eq=False)
 class Scale:
-    """Joint draws of all that turns pixels into millimetres; every array but the centre has shape (N,).
+    """Joint draws of what turns pixels into millimetres.
 
     Parameters
     ----------
     centre_px
         Where the optical axis meets the photograph, shape (2,).
     mm_per_px
-        In the plane of the bar, on the optical axis.
-    tilt
-        The two components of the scene's normal, shape (N, 2), as sines.
-    nearness_per_mm
-        One over the distance from the lens to the plane of the bar; zero for a scanner.
-    face_mm, outline_mm
-        Heights of the inscribed face and of the outline above the plane of the bar.
+        In the plane of the bar, on the optical axis, shape (N,).
+    face, outline
+        The planes of the inscribed face and of the outline.
     model
         What kind of map the marks allowed: ``"similarity"``, or ``"none"`` where nothing gives a scale and
         lengths have no unit.
@@ -58,12 +93,8 @@ class Scale:
 
     centre_px: Floats
     mm_per_px: Floats
-    tilt: Floats
-    nearness_per_mm: Floats
-    face_mm: Floats
-    outline_mm: Floats
-    nominal_face_mm_per_px: float
-    nominal_outline_mm_per_px: float
+    face: Plane
+    outline: Plane
     model: str
 
     @property
@@ -71,51 +102,36 @@ class Scale:
         """Whether anything gives a scale; without one only ratios of lengths mean something."""
         return self.model != "none"
 
-    def map(self, points_px: Floats, height_mm: Floats) -> Floats:
-        """Map pixels to the scene's plane at a height, draw by draw.
 
-        Parameters
-        ----------
-        points_px
-            Shape (P, 2), or (N, P, 2) where the points have draws of their own.
-        height_mm
-            Height above the plane of the bar, shape (N,): ``face_mm`` or ``outline_mm``.
+def find_homography(mm_per_px: Floats, tilt: Floats, nearness: Floats, height: Floats) -> Floats:
+    """Return the map from pixels from the centre to the plane at a height: the equations at the top of this module.
 
-        Returns
-        -------
-        Floats
-            Shape (N, P, 2), in mm, from the foot of the optical axis; x right, y down.
-        """
-        return project(points_px - self.centre_px, self.mm_per_px, self.tilt, self.nearness_per_mm, height_mm)
+    Parameters
+    ----------
+    mm_per_px, nearness, height
+        In the plane of the bar; one over the lens's distance from it; above it in mm; each (N,).
+    tilt
+        The two components of the scene's normal, as sines, shape (N, 2).
 
-    def local(self, at_px: Floats, height_mm: Floats) -> Floats:
-        """Return the mm per pixel around one point (geometric mean of both directions), shape (N,)."""
-        half_px = 8.0
-        cross = np.array([[-half_px, 0.0], [half_px, 0.0], [0.0, -half_px], [0.0, half_px]])
-        left, right, above, below = np.moveaxis(self.map(at_px + cross, height_mm), 1, 0)
-        across, down = right - left, below - above
-        area = across[:, 0] * down[:, 1] - across[:, 1] * down[:, 0]
-        return np.asarray(np.sqrt(np.abs(area))) / (2 * half_px)
-
-
-def project(offset_px: Floats, mm_per_px: Floats, tilt: Floats, nearness: Floats, height: Floats) -> Floats:
-    """Return where the rays of pixels meet the plane at a height: the equations at the top of this module.
-
-    ``offset_px`` is (P, 2) or (N, P, 2), from the centre; ``tilt`` (N, 2); the others (N,). The result is
-    (N, P, 2).
+    Returns
+    -------
+    Floats
+        Shape (3, 3, N); the plane's own axes are e1 = (n_z, 0, -n_x) / r and n x e1.
     """
-    t = offset_px * mm_per_px[:, None, None]
-    k, h = nearness[:, None], height[:, None]
-    a, b = tilt[:, 0, None], tilt[:, 1, None]
-    c = np.sqrt(1 - a**2 - b**2)
-    slant = a * t[..., 0] + b * t[..., 1]
-    s = (c - h * k) / (c + k * slant)
-    depth = -(h + slant) / (c + k * slant)
-    # the plane's own axes: e1 = (c, 0, -a) / r, e2 = n x e1
-    r = np.sqrt(a**2 + c**2)
-    x = (c * s * t[..., 0] - a * depth) / r
-    y = (-a * b * s * t[..., 0] + r**2 * s * t[..., 1] - b * c * depth) / r
-    return np.stack([x, y], axis=-1)
+    a, b = tilt.T
+    c, r = np.sqrt(1 - a**2 - b**2), np.sqrt(1 - b**2)
+    near = c - height * nearness
+    return np.array(
+        [
+            [mm_per_px * (c * near + a**2), mm_per_px * a * b, a * height],
+            [
+                mm_per_px * a * b * height * nearness,
+                mm_per_px * (r**2 * near + b**2 * c),
+                b * c * height,
+            ],
+            [mm_per_px * nearness * r * a, mm_per_px * nearness * r * b, r * c],
+        ]
+    )
 
 
 @dataclass(frozen=True, eq=False)
@@ -145,6 +161,18 @@ class Frame:
         return np.asarray(
             (points_mm @ turned(self.turn) + self.origin_mm) / mm_per_px + self.centre_px,
         )
+
+    def of_plane(self, plane: Plane) -> Plane:
+        """Return the map from this frame at a plane's nominal scale: ``to_px`` and then the plane's."""
+        px_per_mm = 1 / plane.nominal_mm_per_px
+        affine = shifted(self.centre_px + self.origin_mm * px_per_mm)
+        affine[:2, :2] = turned(self.turn).T * px_per_mm
+        return plane.seen_from(affine)
+
+
+def shifted(by: Floats) -> Floats:
+    """Return the (3, 3) matrix that shifts points (2,)."""
+    return np.array([[1.0, 0.0, by[0]], [0.0, 1.0, by[1]], [0.0, 0.0, 1.0]])
 
 
 def turned(angle: float) -> Floats:
@@ -233,16 +261,17 @@ class Prior:
     sd: Floats
     scanner: bool
 
-    def project(self, parameters: Floats, offset_px: Floats, *, on_face: bool) -> Floats:
-        """Map pixels from the centre, (P, 2), by rows of parameters, (N, 5)."""
-        height = parameters[:, 3] if on_face else np.zeros(len(parameters))
-        nearness = np.zeros(len(parameters)) if self.scanner else np.exp(-parameters[:, 4])
-        return project(offset_px, np.exp(parameters[:, 0]), parameters[:, 1:3], nearness, height)
-
     def log_length(self, parameters: Floats, length: Length, centre_px: Floats) -> Floats:
-        """Return the logarithm of a length in mm as rows of parameters see it, shape (N,)."""
-        ends = self.project(parameters, length.ends_px - centre_px, on_face=length.on_face)
+        """Return the logarithm of a length in mm as rows of parameters (N, 5) see it, shape (N,)."""
+        height = parameters[:, 3] if length.on_face else np.zeros(len(parameters))
+        ends = self.plane(parameters, height, centre_px, 1.0).map(length.ends_px)
         return np.asarray(np.log(np.hypot(*(ends[:, 1] - ends[:, 0]).T)))
+
+    def plane(self, parameters: Floats, height: Floats, centre_px: Floats, nominal: float) -> Plane:
+        """Return the plane at a height, (N,), for rows of parameters, (N, 5)."""
+        nearness = np.zeros(len(parameters)) if self.scanner else np.exp(-parameters[:, 4])
+        homography = find_homography(np.exp(parameters[:, 0]), parameters[:, 1:3], nearness, height)
+        return Plane(homography, nominal).seen_from(shifted(-centre_px))
 
 
 def fit_scale(
@@ -287,26 +316,20 @@ def fit_scale(
     notices += note
     parameters, caveats = _draw_posterior(prior, lengths, centre_px, draws, rng)
     notices += caveats
-    nearness = np.zeros(draws) if prior.scanner else np.exp(-parameters[:, 4])
-    face = parameters[:, 3]
-    half_thickness = np.abs(rng.normal(thick[0], thick[1], draws)) / 2
-    median = np.median(parameters, axis=0)
-    k = 0.0 if prior.scanner else float(np.exp(-median[4]))
-    at_bar = float(np.exp(median[0]))
-    return (
-        Scale(
-            centre_px=centre_px,
-            mm_per_px=np.exp(parameters[:, 0]),
-            tilt=parameters[:, 1:3],
-            nearness_per_mm=nearness,
-            face_mm=face,
-            outline_mm=face - half_thickness,
-            nominal_face_mm_per_px=at_bar * (1 - float(median[3]) * k),
-            nominal_outline_mm_per_px=at_bar * (1 - (float(median[3]) - thick[0] / 2) * k),
-            model="similarity",
-        ),
-        notices,
+    thickness_mm = np.abs(rng.normal(thick[0], thick[1], draws))
+    centre = parameters.mean(axis=0)
+    nearness = 0.0 if prior.scanner else float(np.exp(-centre[4]))
+    at_bar, height = float(np.exp(centre[0])), float(centre[3])
+    face, outline = (
+        prior.plane(
+            parameters,
+            parameters[:, 3] - share * thickness_mm,
+            centre_px,
+            at_bar * (1 - (height - share * thick[0]) * nearness),
+        )
+        for share in (0.0, 0.5)
     )
+    return Scale(centre_px, np.exp(parameters[:, 0]), face, outline, "similarity"), notices
 
 
 def pointing_of(view: View) -> tuple[float, list[Assumption]]:
@@ -434,17 +457,9 @@ def _without_scale(view: View, centre_px: Floats, draws: int) -> Scale:
     points = np.array(traced or [(0.0, 0.0), (90.0, 0.0)])
     mm_per_px = 90.0 / max(float(np.ptp(points, axis=0).max()), 1.0)
     zero = np.zeros(draws)
-    return Scale(
-        centre_px=centre_px,
-        mm_per_px=np.full(draws, mm_per_px),
-        tilt=np.zeros((draws, 2)),
-        nearness_per_mm=zero,
-        face_mm=zero,
-        outline_mm=zero,
-        nominal_face_mm_per_px=mm_per_px,
-        nominal_outline_mm_per_px=mm_per_px,
-        model="none",
-    )
+    homography = find_homography(np.full(draws, mm_per_px), np.zeros((draws, 2)), zero, zero)
+    plane = Plane(homography, mm_per_px).seen_from(shifted(-centre_px))
+    return Scale(centre_px, np.full(draws, mm_per_px), plane, plane, "none")
 
 
 def _no_scale(view: View) -> Missing:
@@ -459,4 +474,4 @@ def _no_scale(view: View) -> Missing:
 
 def measure_scale(scale: Scale, at_px: Floats) -> Quantity:
     """Return the millimetres per pixel at the face, around one point."""
-    return Quantity("mm/px", scale.local(at_px, scale.face_mm))
+    return Quantity("mm/px", scale.face.local(at_px))

@@ -10,7 +10,7 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from layout.frame import Frame, Scale
+from layout.frame import Frame, Plane, Scale
 from layout.outline import Outline
 from layout.quantity import Floats
 from layout.rulings import Line
@@ -20,30 +20,15 @@ TAPER_PER_MM = 100.0
 
 @dataclass(frozen=True, eq=False)
 class Mapped:
-    """The way from the face frame to millimetres, row by row."""
+    """The way from the face frame to millimetres, row by row: for points of the inscribed face, and of the outline."""
 
-    scale: Scale
-    frame: Frame
+    face: Plane
+    outline: Plane
 
-    def on_face(self, points_mm: Floats) -> Floats:
-        """Map points (N, P, 2) or (P, 2) of the face frame that lie on the inscribed face."""
-        px = self.frame.to_px(points_mm, self.scale.nominal_face_mm_per_px)
-        return self.scale.map(px, self.scale.face_mm)
-
-    def on_outline(self, points_mm: Floats) -> Floats:
-        """Map points (N, P, 2) or (P, 2) of the face frame that lie on the outline."""
-        px = self.frame.to_px(points_mm, self.scale.nominal_outline_mm_per_px)
-        return self.scale.map(px, self.scale.outline_mm)
-
-    def face_ratio(self, at_mm: Floats) -> Floats:
-        """Return each row's scale over the nominal one at a point of the face, shape (N,)."""
-        px = self.frame.to_px(at_mm, self.scale.nominal_face_mm_per_px)
-        return self.scale.local(px, self.scale.face_mm) / self.scale.nominal_face_mm_per_px
-
-    def outline_ratio(self, at_mm: Floats) -> Floats:
-        """Return each row's scale over the nominal one at a point of the outline, shape (N,)."""
-        px = self.frame.to_px(at_mm, self.scale.nominal_outline_mm_per_px)
-        return self.scale.local(px, self.scale.outline_mm) / self.scale.nominal_outline_mm_per_px
+    @classmethod
+    def of(cls, scale: Scale, frame: Frame) -> Mapped:
+        """Lay a scale's planes over the face frame."""
+        return cls(frame.of_plane(scale.face), frame.of_plane(scale.outline))
 
 
 def measure_column(left: Line, right: Line, mapped: Mapped) -> tuple[Floats, Floats]:
@@ -56,7 +41,7 @@ def measure_column(left: Line, right: Line, mapped: Mapped) -> tuple[Floats, Flo
         (max(left.reach[0], right.reach[0]), min(left.reach[1], right.reach[1])),
     )
     ends = np.stack([left.at(top), left.at(bottom), right.at(top), right.at(bottom)], axis=1)
-    l0, l1, r0, r1 = np.moveaxis(mapped.on_face(ends), 1, 0)
+    l0, l1, r0, r1 = np.moveaxis(mapped.face.map(ends), 1, 0)
     along = _unit((l1 - l0) + (r1 - r0)) if bottom > top else _unit(_run(left, mapped))
     at_top, at_bottom = _across(along, r0 - l0), _across(along, r1 - l1)
     height = np.hypot(*((l1 - l0 + r1 - r0) / 2).T)
@@ -67,7 +52,7 @@ def measure_column(left: Line, right: Line, mapped: Mapped) -> tuple[Floats, Flo
 def _run(line: Line, mapped: Mapped) -> Floats:
     """Return a vertical line's mapped run over 10 mm, (N, 2)."""
     start, end = line.at(line.middle - 5), line.at(line.middle + 5)
-    return np.asarray(np.diff(mapped.on_face(np.stack([start, end], axis=1)), axis=1)[:, 0])
+    return np.asarray(np.diff(mapped.face.map(np.stack([start, end], axis=1)), axis=1)[:, 0])
 
 
 def _unit(vectors: Floats) -> Floats:
@@ -99,7 +84,7 @@ class Extent:
 
 def measure_extent(outline: Outline, mapped: Mapped) -> Extent:
     """Return the whole tablet's width and height between its tangents."""
-    left, right, upper, lower = np.moveaxis(mapped.on_outline(outline.tangents()), 1, 0)
+    left, right, upper, lower = np.moveaxis(mapped.outline.map(outline.tangents()), 1, 0)
     return Extent(
         left=left,
         right=right,
@@ -111,7 +96,7 @@ def measure_extent(outline: Outline, mapped: Mapped) -> Extent:
 
 def measure_to_edge(line: Line, side: str, extent: Extent, mapped: Mapped) -> Floats:
     """Return the distance from a vertical ruling, at the middle of its trace, to the whole tablet's edge."""
-    point = mapped.on_face(line.at(line.middle)[:, None])[:, 0]
+    point = mapped.face.map(line.at(line.middle)[:, None])[:, 0]
     return extent.to_edge(point, side)
 
 

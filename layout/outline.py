@@ -1,14 +1,15 @@
 """The shape of the whole tablet from the pieces of original edge that survive.
 
-The outline is two pairs of half superellipses about a vertical and a horizontal axis,
+The outline is a superellipse whose sides and ends may bulge, about a vertical and a horizontal axis:
 
-    |X / a|^p + |Y / b|^q = 1,
+    |U|^n + |V|^n = 1,    U = u / (1 - s v^2),  V = v / (1 - e u^2),    u = X / a, v = Y / b,
 
-with a of its own left and right, b above and below (hand-made halves differ), n = sqrt(p q) of its own above and
-below (rounded differently) and p / q near one; X, Y are turned by a small angle. The clay's edge and the hand that
-traced it wobble about it: the normal distances of the traced points are a Gaussian process with a Matern 5/2 or
-3/2 correlation (Rasmussen and Williams 2006, eq. 4.17) plus independent errors of pointing. The break is no
-evidence of shape.
+with a of its own left and right, b above and below (hand-made halves differ), n of its own above and below
+(rounded differently), and the bulges s of the sides and e of the ends: how much of a half extent a straight run
+falls back towards its corner. X, Y are turned by a small angle. The clay's edge and the hand that traced it wobble
+about it: the normal distances of the traced points are a Gaussian process with a Matern 5/2 or 3/2 correlation
+(Rasmussen and Williams 2006, eq. 4.17), a slow and small one for outlines that are not quite of this family, and
+independent errors of pointing. The break is no evidence of shape.
 
 The posterior needs no sampler. On a ladder of widths all other shape parameters are fitted together
 (Gauss-Newton, all rungs at once); about each rung the residuals are linear, so that for every length and size
@@ -18,6 +19,7 @@ width, a wobble, then the Gaussian rest; some rows are checked against the exact
 
 from __future__ import annotations
 
+import math
 from dataclasses import dataclass
 
 import numpy as np
@@ -28,30 +30,34 @@ from layout.quantity import Floats
 
 STATIONS = 60
 FIRST_RUNGS, RUNGS = 18, 22
-STEPS, WARM_STEPS = 12, 8
-LENGTHS_MM = np.array([3.0, 5.5, 9.0, 16.0, 5.0, 12.0])
-ROUGH = (False, False, False, False, True, True)
-LENGTH_PRIOR = (np.log(8.0), 0.6)
-SIZES_MM = np.geomspace(0.06, 2.4, 11)
-SIZE_PRIOR = (np.log(0.35), 0.6)
-TYPICAL_KERNEL, TYPICAL_SIZE = 2, 5
-"""The places of 9 mm and of 0.38 mm on these lists."""
+STEPS, WARM_STEPS = 8, 4
+LENGTHS_MM = np.array([3.5, 7.0, 14.0, 5.0, 12.0])
+ROUGH = (False, False, False, True, True)
+LENGTH_PRIOR = (np.log(8.0), 0.5)
+SIZES_MM = np.geomspace(0.08, 1.6, 9)
+SIZE_PRIOR = (np.log(0.35), 0.5)
+TYPICAL = np.array([len(SIZES_MM) + 4])
+"""The place of 7 mm and 0.36 mm among all wobbles."""
+ROUGH_MM = 0.4
+NEGLIGIBLE = 9.0
 ROUNDNESS_PRIOR = (np.log(3.5), 0.5)
-ACROSS_SD = 0.07
+MISFIT_MM, MISFIT_LENGTH_MM = 0.07, 25.0
+BULGE_PRIOR = (0.02, 0.018)
 PROPORTION_SD = 0.4
 TURN_SD = np.deg2rad(2.5)
 PLACE_SD_MM = 500.0
 WIDEST = 6.0
 """How many times the surviving width the ladder reaches."""
 CLEAR_MM = 5.0
+NO_MM = 1e-7
 CHECKED = 300
 ENOUGH, TOO_FEW = 0.5, 0.1
 IMPOSSIBLE, SURE = 1e-3, 0.9999
 
-X0, Y0, TURN, HEIGHT, UPPER, LOWER, SIDES, ENDS, ACROSS = range(9)
-"""Shape parameters beside the log width: centre, turn, log height, log n above and below, the logarithms
-of left over right half-width and of lower over upper half-height, and
-of sqrt(p / q)."""
+X0, Y0, TURN, HEIGHT, UPPER, LOWER, SIDES, ENDS, BULGE_ENDS, BULGE_SIDES = range(10)
+SHAPES = 10
+"""Shape parameters beside the log width: centre, turn, log height, log n above and below, the logarithms of left over
+right half-width and of lower over upper half-height, and the bulges."""
 
 
 @dataclass(frozen=True, eq=False)
@@ -77,14 +83,12 @@ class Traced:
 class Outline:
     """Joint draws of the whole outline in the face frame at the nominal scale.
 
-    ``log_width`` has shape (N,), ``shape`` (N, 9) in the order of this module's parameters; ``size`` is
-    the wobble's standard deviation in mm and ``kernel`` the place of its correlation on the list, shape (N,).
+    ``log_width`` has shape (N,), ``shape`` (N, 10) in the order of this module's parameters; ``wobbles`` has one a row.
     """
 
     log_width: Floats
     shape: Floats
-    size: Floats
-    kernel: NDArray[np.intp]
+    wobbles: _Wobbles
 
     @property
     def halves(self) -> tuple[Floats, Floats, Floats, Floats]:
@@ -107,10 +111,11 @@ class Outline:
         return _from_own(own, self.shape)
 
     def area(self) -> Floats:
-        """Return the area in mm2, shape (N,): quadrants of a b G(1 + 1/p) G(1 + 1/q) / G(1 + 1/p + 1/q)."""
+        """Return the area in mm2, shape (N,)."""
         left, right, upper, lower = self.halves
-        of_upper, of_lower = (_quadrant(*_exponents(self.shape, half)) for half in (UPPER, LOWER))
-        return np.asarray((left + right) * (upper * of_upper + lower * of_lower))
+        bulges = self.shape[:, BULGE_ENDS], self.shape[:, BULGE_SIDES]
+        above, below = (_quadrant(self.shape[:, half], *bulges) for half in (UPPER, LOWER))
+        return np.asarray((left + right) * (upper * above + lower * below))
 
     def polygon(self, quantile: float, points: int = 240) -> Floats:
         """Return the outline whose width stands at a quantile, as a closed polygon (points, 2) in mm.
@@ -125,27 +130,33 @@ class Outline:
         left, right, upper, lower = (float(half[0]) for half in _halves(log_width, shape))
         t = np.linspace(0, 2 * np.pi, points, endpoint=False)
         cos, sin = np.cos(t), np.sin(t)
-        above, below = _exponents(shape[0], UPPER), _exponents(shape[0], LOWER)
-        p, q = (np.where(sin < 0, one, other) for one, other in zip(above, below, strict=True))
-        x = np.where(cos < 0, left, right) * np.sign(cos) * np.abs(cos) ** (2 / p)
-        y = np.where(sin < 0, upper, lower) * np.sign(sin) * np.abs(sin) ** (2 / q)
-        return np.asarray(_from_own(np.stack([x, y], axis=-1)[None], shape)[0])
+        n = np.exp(np.where(sin < 0, shape[0, UPPER], shape[0, LOWER]))
+        full_u = u = np.sign(cos) * np.abs(cos) ** (2 / n)
+        full_v = v = np.sign(sin) * np.abs(sin) ** (2 / n)
+        for _ in range(20):  # each step brings the point nearer by a factor of about the bulge
+            u, v = full_u * (1 - shape[0, BULGE_SIDES] * v**2), full_v * (1 - shape[0, BULGE_ENDS] * u**2)
+        own = np.stack([u * np.where(cos < 0, left, right), v * np.where(sin < 0, upper, lower)], axis=-1)
+        return np.asarray(_from_own(own[None], shape)[0])
 
 
 def feet(points: Floats, log_width: Floats, shape: Floats) -> Floats:
     """Return the feet of the perpendiculars from points (P, 2) on one outline, (P, 2)."""
-    away, slopes = distances(points, log_width, shape)
+    away, slopes = linearised(points, log_width, shape)
     # moving the centre by a unit towards a point brings it nearer by the normal's component
-    normal = -slopes[0][:, [X0, Y0]]
+    normal = -slopes[0, [X0, Y0]].T
     return np.asarray(points - away[0][:, None] * normal)
 
 
 def _halves(log_width: Floats, shape: Floats) -> tuple[Floats, Floats, Floats, Floats]:
-    """Return left, right, upper, lower half extents for log widths (...,) and shapes (..., 9)."""
-    share_left = 1 / (1 + np.exp(-shape[..., SIDES]))
-    share_lower = 1 / (1 + np.exp(-shape[..., ENDS]))
+    """Return left, right, upper, lower half extents for log widths (...,) and shapes (..., 10)."""
+    share_left, share_lower = _share(shape[..., SIDES]), _share(shape[..., ENDS])
     width, height = np.exp(log_width), np.exp(shape[..., HEIGHT])
     return width * share_left, width * (1 - share_left), height * (1 - share_lower), height * share_lower
+
+
+def _share(log_ratio: Floats) -> Floats:
+    """Return the share that the first of two halves has, from the logarithm of their ratio."""
+    return np.asarray(1 / (1 + np.exp(-log_ratio)))
 
 
 def _from_own(own: Floats, shape: Floats) -> Floats:
@@ -156,110 +167,126 @@ def _from_own(own: Floats, shape: Floats) -> Floats:
     return np.stack([x, y], axis=-1)
 
 
-def _exponents(shape: Floats, half: int) -> tuple[Floats, Floats]:
-    """Return the exponents across and along, p and q, of the upper or the lower half."""
-    n, ratio = np.exp(shape[..., half]), np.exp(shape[..., ACROSS])
-    return n * ratio, n / ratio
+def _quadrant(log_n: Floats, end: Floats, side: Floats) -> Floats:
+    """Return the area of a quadrant with unit half extents, shape (N,).
 
-
-def _quadrant(p: Floats, q: Floats) -> Floats:
-    """Return the area of a quadrant with unit half extents."""
-    return np.exp(_log_gamma(1 + 1 / p) + _log_gamma(1 + 1 / q) - _log_gamma(1 + 1 / p + 1 / q))
-
-
-def _log_gamma(x: Floats) -> Floats:
-    """Return the logarithm of the gamma function for x of 1 or more: Stirling's series at x + 8 (from memory)."""
-    z = x + 8
-    series = (z - 0.5) * np.log(z) - z + 0.5 * np.log(2 * np.pi) + 1 / (12 * z) - 1 / (360 * z**3)
-    return np.asarray(series - np.log(np.prod([x + step for step in range(8)], axis=0)))
+    The superellipse's G(1 + 1/n)^2 / G(1 + 2/n), and beta integrals of what the bulges take away: exact but for terms
+    of the third order in them. Tabled over n, which is all that the integrals depend on.
+    """
+    table = np.linspace(log_n.min(), log_n.max(), 128)
+    g = {k: np.array([math.lgamma(1 + k / np.exp(at)) for at in table]) for k in (1, 2, 3, 4, 6)}
+    plain, one, both = (
+        np.interp(log_n, table, np.exp(integral))
+        for integral in (2 * g[1] - g[2], g[1] + g[3] - g[4] - np.log(3), 2 * g[3] - g[6] - np.log(3))
+    )
+    return np.asarray(plain - (end + side) * one + 3 * end * side * both)
 
 
 # ---------------------------------------------------------------------------------- distances and slopes
 
 
-def distances(points: Floats, log_width: Floats, shape: Floats) -> tuple[Floats, Floats]:
-    """Return normal distances of points from outlines, and their slopes in the parameters.
-
-    Two steps towards the foot of the perpendicular: F / |grad F| with F = (|u|^p + |v|^q)^(1/n) - 1, first at the
-    point, then at the foot that this gives.
+def distances(points: Floats, log_width: Floats, shape: Floats) -> Floats:
+    """Return normal distances of points from outlines, positive outside.
 
     Parameters
     ----------
     points
         Shape (P, 2), in mm of the face frame.
     log_width, shape
-        Shapes (G,) and (G, 9): G outlines.
+        Shapes (G,) and (G, 10): G outlines.
 
     Returns
     -------
-    tuple
-        Distances (G, P), positive outside; slopes (G, P, 9) in the shape parameters.
+    Floats
+        Shape (G, P).
     """
+    first, foot = _approach(*_to_own(points, shape), log_width, shape)
+    return np.asarray(first.away + foot.away)
+
+
+def linearised(points: Floats, log_width: Floats, shape: Floats) -> tuple[Floats, Floats]:
+    """Return the distances, (G, P), and their slopes in the shape parameters, (G, 10, P)."""
+    first, foot = _approach(*_to_own(points, shape), log_width, shape)
+    return first.away + foot.away, foot.slopes(shape)
+
+
+def _to_own(points: Floats, shape: Floats) -> tuple[Floats, Floats]:
+    """Return points of the face frame in each tablet's own axes: x and y, (G, P)."""
     cos, sin = np.cos(shape[:, TURN, None]), np.sin(shape[:, TURN, None])
     dx, dy = points[:, 0] - shape[:, X0, None], points[:, 1] - shape[:, Y0, None]
-    x, y = cos * dx + sin * dy, cos * dy - sin * dx
+    return cos * dx + sin * dy, cos * dy - sin * dx
+
+
+def _approach(x: Floats, y: Floats, log_width: Floats, shape: Floats) -> tuple[_Implicit, _Implicit]:
+    """Step twice towards the foot of the perpendicular: from the point, then from where that leads."""
     first = _Implicit.at(x, y, log_width, shape)
-    away = first.f / first.steep
-    x, y = x - away * first.fx / first.steep, y - away * first.fy / first.steep
-    foot = _Implicit.at(x, y, log_width, shape)
-    return away + foot.f / foot.steep, foot.slopes(x, y, shape, cos, sin)
+    step = first.away / first.steep
+    return first, _Implicit.at(x - step * first.fx, y - step * first.fy, log_width, shape)
 
 
 @dataclass(frozen=True, eq=False)
 class _Implicit:
-    """F and its derivatives at points of the tablet's own axes, every array (G, P)."""
+    """F = (|U|^n + |V|^n)^(1/n) - 1 and its first derivatives at points of the tablet's own axes.
 
-    f: Floats
+    Every array is (G, P): the place x, y; dF/dx, dF/dy; the gradient's length; F over it; F's derivatives by
+    log |U|, log |V|, log n; and v^2 / (1 - s v^2), u^2 / (1 - e u^2).
+    """
+
+    x: Floats
+    y: Floats
     fx: Floats
     fy: Floats
     steep: Floats
-    f_half_x: Floats  # by the logarithm of the half extent that the point lies on
-    f_half_y: Floats
-    f_n: Floats  # by log n
-    f_across: Floats  # by the exponents' ratio
+    away: Floats
+    by_u: Floats
+    by_v: Floats
+    by_n: Floats
+    side: Floats
+    end: Floats
 
     @classmethod
     def at(cls, x: Floats, y: Floats, log_width: Floats, shape: Floats) -> _Implicit:
-        """Evaluate F = (|u|^p + |v|^q)^(1/n) - 1."""
+        """Evaluate F and what its derivatives are made of."""
         left, right, upper, lower = (half[:, None] for half in _halves(log_width, shape))
-        a, b = np.where(x < 0, left, right), np.where(y < 0, upper, lower)
-        n = np.exp(np.where(y < 0, shape[:, UPPER, None], shape[:, LOWER, None]))
-        log_u = np.log(np.maximum(np.abs(x) / a, 1e-9))
-        log_v = np.log(np.maximum(np.abs(y) / b, 1e-9))
-        p, q = n * np.exp(shape[:, ACROSS, None]), n * np.exp(-shape[:, ACROSS, None])
-        power_u, power_v = np.exp(p * log_u), np.exp(q * log_v)
-        g = power_u + power_v
-        log_g = np.log(g)
-        radius = np.exp(log_g / n)
-        share_u, share_v = power_u * p / (g * n), power_v * q / (g * n)
-        fx = radius * share_u / np.where(x < 0, np.minimum(x, -1e-9), np.maximum(x, 1e-9))
-        fy = radius * share_v / np.where(y < 0, np.minimum(y, -1e-9), np.maximum(y, 1e-9))
-        return cls(
-            f=radius - 1,
-            fx=fx,
-            fy=fy,
-            steep=np.hypot(fx, fy),
-            f_half_x=-radius * share_u,
-            f_half_y=-radius * share_v,
-            f_n=radius * (share_u * log_u + share_v * log_v - log_g / n),
-            f_across=radius * (share_u * log_u - share_v * log_v),
-        )
+        n = np.where(y < 0, np.exp(shape[:, UPPER, None]), np.exp(shape[:, LOWER, None]))
+        x_abs, y_abs = np.maximum(np.abs(x), NO_MM), np.maximum(np.abs(y), NO_MM)
+        u, v = x_abs / np.where(x < 0, left, right), y_abs / np.where(y < 0, upper, lower)
+        # far outside the ladder's first guesses may lie; there the bulges stop to matter
+        u2, v2 = np.minimum(u * u, 2.0), np.minimum(v * v, 2.0)
+        end, side = shape[:, BULGE_ENDS, None], shape[:, BULGE_SIDES, None]
+        in_u, in_v = np.maximum(1 - side * v2, 0.3), np.maximum(1 - end * u2, 0.3)
+        log_u, log_v = np.log(u / in_u), np.log(v / in_v)
+        power_u, power_v = np.exp(n * log_u), np.exp(n * log_v)
+        total = power_u + power_v
+        log_total = np.log(total)
+        radius = np.exp(log_total / n)
+        by_u, by_v = radius * power_u / total, radius * power_v / total
+        by_side, by_end = v2 / in_u, u2 / in_v
+        fx = np.copysign((by_u + 2 * by_v * end * by_end) / x_abs, x)
+        fy = np.copysign((by_v + 2 * by_u * side * by_side) / y_abs, y)
+        steep = np.sqrt(fx * fx + fy * fy)
+        by_n = by_u * log_u + by_v * log_v - radius * log_total / n
+        return cls(x, y, fx, fy, steep, (radius - 1) / steep, by_u, by_v, by_n, by_side, by_end)
 
-    def slopes(self, x: Floats, y: Floats, shape: Floats, cos: Floats, sin: Floats) -> Floats:
-        """Return how the distance changes with the shape parameters, (G, P, 9)."""
-        share_left = (1 / (1 + np.exp(-shape[:, SIDES])))[:, None]
-        share_lower = (1 / (1 + np.exp(-shape[:, ENDS])))[:, None]
-        out = np.empty((*x.shape, 9))
-        out[..., X0] = -cos * self.fx + sin * self.fy
-        out[..., Y0] = -sin * self.fx - cos * self.fy
-        out[..., TURN] = y * self.fx - x * self.fy
-        out[..., HEIGHT] = self.f_half_y
-        out[..., UPPER] = np.where(y < 0, self.f_n, 0.0)
-        out[..., LOWER] = np.where(y < 0, 0.0, self.f_n)
-        out[..., SIDES] = self.f_half_x * np.where(x < 0, 1 - share_left, -share_left)
-        out[..., ENDS] = self.f_half_y * np.where(y < 0, -share_lower, 1 - share_lower)
-        out[..., ACROSS] = self.f_across
-        return out / self.steep[..., None]
+    def slopes(self, shape: Floats) -> Floats:
+        """Return how the distance changes with the shape parameters, (G, 10, P)."""
+        cos, sin = np.cos(shape[:, TURN, None]), np.sin(shape[:, TURN, None])
+        share_left, share_lower = (_share(shape[:, at, None]) for at in (SIDES, ENDS))
+        by_half_x, by_half_y = -self.x * self.fx, -self.y * self.fy
+        above = self.y < 0
+        out = np.empty((len(shape), SHAPES, self.x.shape[1]))
+        out[:, X0] = -cos * self.fx + sin * self.fy
+        out[:, Y0] = -sin * self.fx - cos * self.fy
+        out[:, TURN] = self.y * self.fx - self.x * self.fy
+        out[:, HEIGHT] = by_half_y
+        out[:, UPPER] = np.where(above, self.by_n, 0.0)
+        out[:, LOWER] = self.by_n - out[:, UPPER]
+        out[:, SIDES] = by_half_x * np.where(self.x < 0, 1 - share_left, -share_left)
+        out[:, ENDS] = by_half_y * np.where(above, -share_lower, 1 - share_lower)
+        out[:, BULGE_ENDS] = self.by_v * self.end
+        out[:, BULGE_SIDES] = self.by_u * self.side
+        out /= self.steep[:, None]
+        return out
 
 
 # -------------------------------------------------------------------------------------------------- the fit
@@ -267,45 +294,75 @@ class _Implicit:
 
 @dataclass(frozen=True, eq=False)
 class _Stations:
-    """Stations along the edges: points (M, 2), their own errors (M,), and the wobble's eigenbases.
+    """Stations along the edges: points (M, 2), and what makes their residuals independent.
 
-    ``whiten[l]`` (M, M) turns residuals into independent ones under length l, whose variances are
-    ``size^2 * values[l] + 1``.
+    ``whiten[k]`` (M, M) turns residuals into independent ones under kernel k, whose variances are
+    ``size^2 * values[k] + 1``.
     """
 
     points: Floats
-    noise: Floats
-    kernels: NDArray[np.intp]
     whiten: Floats
     values: Floats
 
     @classmethod
-    def of(cls, traced: Traced) -> _Stations:
-        """Average each piece's points into at most 60 stations, under the typical wobble only."""
-        points, noise = [], []
-        for _, piece in traced.pieces:
-            for part in np.array_split(piece, min(STATIONS, len(piece))):
-                points.append(part.mean(axis=0))
-                noise.append(traced.pointing_mm / np.sqrt(len(part)))
-        place = np.array(points)
-        return cls.along(place, np.maximum(np.array(noise), 0.01), place, np.array([TYPICAL_KERNEL]))
-
-    @classmethod
-    def along(cls, points: Floats, noise: Floats, smooth: Floats, kernels: NDArray[np.intp]) -> _Stations:
-        """Correlate stations by the distance between points (M, 2) of a smooth edge.
+    def along(cls, points: Floats, noise: Floats, smooth: Floats) -> _Stations:
+        """Correlate stations by the distance between points (M, 2) of a smooth edge; ``noise`` (M,) is their own.
 
         Between the traced points themselves the wobble would be part of the distance, and where it is steep,
         a little more distance would explain it away.
         """
         apart = np.hypot(*(smooth[:, None] - smooth[None]).transpose(2, 0, 1))
-        values, bases = np.linalg.eigh(_correlations(apart, kernels) / np.outer(noise, noise))
-        return cls(points, noise, kernels, bases.transpose(0, 2, 1) / noise, np.maximum(values, 0.0))
+        fixed = np.diag(noise**2) + MISFIT_MM**2 * matern52(apart / MISFIT_LENGTH_MM)
+        inner = np.linalg.inv(np.linalg.cholesky(fixed))
+        values, bases = np.linalg.eigh(inner @ _correlations(apart) @ inner.T)
+        return cls(points, bases.transpose(0, 2, 1) @ inner, np.maximum(values, 0.0))
+
+    def variances(self, wobbles: _Wobbles) -> Floats:
+        """Return the variances of the whitened residuals under some wobbles, (C, M)."""
+        return np.asarray(SIZES_MM[wobbles.size, None] ** 2 * self.values[wobbles.kernel] + 1)
 
 
-def _correlations(apart: Floats, kernels: NDArray[np.intp]) -> Floats:
-    """Return the correlations of some wobbles at distances (M, M), shape (L, M, M)."""
+@dataclass(frozen=True, eq=False)
+class _Wobbles:
+    """Some wobbles: the places of their kernels and sizes on their lists, each of shape (C,)."""
+
+    kernel: NDArray[np.intp]
+    size: NDArray[np.intp]
+
+    @classmethod
+    def every(cls) -> _Wobbles:
+        """Return all of them."""
+        return cls(*np.divmod(np.arange(len(LENGTHS_MM) * len(SIZES_MM)), len(SIZES_MM)))
+
+    def at(self, places: NDArray[np.intp]) -> _Wobbles:
+        """Return those at some places."""
+        return _Wobbles(self.kernel[places], self.size[places])
+
+    @property
+    def log_prior(self) -> Floats:
+        """Logarithm of the prior, up to a constant, (C,)."""
+        length = (np.log(LENGTHS_MM[self.kernel]) - LENGTH_PRIOR[0]) / LENGTH_PRIOR[1]
+        size = (np.log(SIZES_MM[self.size]) - SIZE_PRIOR[0]) / SIZE_PRIOR[1]
+        return np.asarray(-0.5 * (length**2 + size**2))
+
+
+def _average(traced: Traced) -> tuple[Floats, Floats]:
+    """Average each piece's points into at most 60 stations: points (M, 2), and their own errors (M,)."""
+    points, noise = [], []
+    for _, piece in traced.pieces:
+        for part in np.array_split(piece, min(STATIONS, len(piece))):
+            points.append(part.mean(axis=0))
+            noise.append(traced.pointing_mm / np.sqrt(len(part)))
+    return np.array(points), np.maximum(np.array(noise), 0.01)
+
+
+def _correlations(apart: Floats) -> Floats:
+    """Return the correlations of all kernels at distances (M, M), shape (K, M, M)."""
     return np.stack(
-        [(matern32 if ROUGH[kernel] else matern52)(apart / LENGTHS_MM[kernel]) for kernel in kernels]
+        [
+            (matern32 if rough else matern52)(apart / length)
+            for length, rough in zip(LENGTHS_MM, ROUGH, strict=True)
+        ]
     )
 
 
@@ -323,7 +380,7 @@ def matern52(ratio: Floats) -> Floats:
 
 @dataclass(frozen=True, eq=False)
 class _Prior:
-    """Gaussian prior of the shape parameters given the log width: mean (G, 9) and sd (9,)."""
+    """Gaussian prior of the shape parameters given the log width: mean (G, 10) and sd (10,)."""
 
     centre: Floats
     asymmetry: float
@@ -334,9 +391,13 @@ class _Prior:
         mean[:, HEIGHT] = log_width
         return mean
 
+    def misfit(self, log_width: Floats, shape: Floats) -> Floats:
+        """Return the sum of squares of the parameters' distances from their means, in their sd, (G,)."""
+        return np.asarray((((shape - self.mean(log_width)) / self.sd) ** 2).sum(axis=1))
+
     @property
     def sd(self) -> Floats:
-        """Standard deviations of the nine shape parameters."""
+        """Standard deviations of the ten shape parameters."""
         n = ROUNDNESS_PRIOR[1]
         return np.array(
             [
@@ -348,36 +409,36 @@ class _Prior:
                 n,
                 self.asymmetry,
                 self.asymmetry,
-                ACROSS_SD,
+                BULGE_PRIOR[1],
+                BULGE_PRIOR[1],
             ]
         )
 
 
 @dataclass(frozen=True, eq=False)
 class _Ladder:
-    """Gaussian posteriors of the shape on every rung x length x size, and their evidence.
+    """Gaussian posteriors of the shape on every rung under every wobble, and their evidence.
 
-    ``log_width`` (G,); ``log_evidence`` (G, L, S); ``mean`` (G, L, S, 9);
-    ``root`` (G, L, S, 9, 9) with covariance root root'.
+    ``log_width`` (G,); ``log_evidence`` (C, G); ``mean`` (C, G, 10); ``precision`` (C, G, 10, 10).
     """
 
     log_width: Floats
+    wobbles: _Wobbles
     log_evidence: Floats
     mean: Floats
-    root: Floats
-    log_det: Floats
-
-    @property
-    def wobble(self) -> tuple[int, int]:
-        """The most probable length and size of the wobble, as places on their grids."""
-        over_rungs = np.exp(self.log_evidence - self.log_evidence.max()).sum(axis=0)
-        length, size = np.unravel_index(int(over_rungs.argmax()), over_rungs.shape)
-        return int(length), int(size)
+    precision: Floats
 
     @property
     def log_marginal(self) -> Floats:
         """The log width's marginal on the rungs, (G,)."""
-        return np.asarray(np.logaddexp.reduce(self.log_evidence.reshape(len(self.log_width), -1), axis=1))
+        return np.asarray(np.logaddexp.reduce(self.log_evidence, axis=0))
+
+    @property
+    def probable(self) -> _Wobbles:
+        """The wobbles that matter, the most probable first."""
+        over_rungs = np.logaddexp.reduce(self.log_evidence, axis=1)
+        order = np.argsort(-over_rungs)
+        return self.wobbles.at(order[over_rungs[order] > over_rungs[order[0]] - NEGLIGIBLE])
 
 
 def fit_outline(
@@ -400,20 +461,21 @@ def fit_outline(
         The outline, or None where the posterior could not be drawn from (``outline.unsure`` then says so),
         and warnings.
     """
-    stations = _Stations.of(traced)
+    points, noise = _average(traced)
     start, prior = _begin(traced, asymmetry)
-    seen = float(np.ptp(np.vstack([stations.points, traced.breaks]), axis=0)[0])
+    seen = float(np.ptp(np.vstack([points, traced.breaks]), axis=0)[0])
     log_width = np.linspace(np.log(0.97 * seen), np.log(WIDEST * seen), FIRST_RUNGS)
-    shape = _climb(stations, prior, log_width, start(log_width), (0, TYPICAL_SIZE), STEPS)
-    best = [int(_weigh(stations, prior, log_width, shape).log_marginal.argmax())]
-    smooth = feet(stations.points, log_width[best], shape[best])
-    stations = _Stations.along(stations.points, stations.noise, smooth, np.arange(len(LENGTHS_MM)))
-    shape = _climb(stations, prior, log_width, shape, (TYPICAL_KERNEL, TYPICAL_SIZE), WARM_STEPS)
-    ladder = _weigh(stations, prior, log_width, shape)
-    log_width = _relaid(ladder)
-    warm = np.stack([np.interp(log_width, ladder.log_width, column) for column in shape.T], axis=-1)
-    shape = _climb(stations, prior, log_width, warm, ladder.wobble, WARM_STEPS)
-    ladder = _weigh(stations, prior, log_width, shape)
+    shape = _climb(points, np.eye(len(points)) / ROUGH_MM, prior, log_width, start(log_width), STEPS)
+    misfit = ((distances(points, log_width, shape) / ROUGH_MM) ** 2).sum(axis=1)
+    best = [int((misfit + prior.misfit(log_width, shape)).argmin())]
+    stations = _Stations.along(points, noise, feet(points, log_width[best], shape[best]))
+    wobbles = _Wobbles.every()
+    shape = _climb(points, _root(stations, wobbles.at(TYPICAL)), prior, log_width, shape, WARM_STEPS)
+    ladder = _weigh(stations, prior, log_width, shape, wobbles)
+    log_width, wobbles = _relaid(ladder), ladder.probable
+    shape = np.stack([np.interp(log_width, ladder.log_width, column) for column in shape.T], axis=-1)
+    shape = _climb(points, _root(stations, wobbles), prior, log_width, shape, WARM_STEPS)
+    ladder = _weigh(stations, prior, log_width, shape, wobbles)
     outline, log_proposal = _draw(ladder, draws, rng)
     rows = rng.permutation(draws)[:CHECKED]
     log_weights = _log_exact(outline, stations, prior, rows) - log_proposal[rows]
@@ -427,7 +489,7 @@ def fit_outline(
         caveats.append(warn("outline.reweighted", percent=round(100 * effective)))
     holds = _holds(outline, _inner(traced.breaks, stations.points))
     weights = weights * holds
-    if holds.max() < IMPOSSIBLE or _effective_share(np.log(weights)) < TOO_FEW**2:
+    if holds.max() < IMPOSSIBLE or _effective_share(np.log(np.maximum(weights, 1e-300))) < TOO_FEW**2:
         return None, [*caveats, warn("outline.break_outside")]
     return _resampled(outline, weights, rng), caveats
 
@@ -446,7 +508,9 @@ def _begin(traced: Traced, asymmetry: float) -> tuple[_Start, _Prior]:
     right = float(np.percentile(found["right"][:, 0], 90)) if "right" in found else None
     n = ROUNDNESS_PRIOR[0]
     middle = (top + bottom) / 2
-    centre = np.array([everything[:, 0].mean(), middle, 0.0, 0.0, n, n, 0.0, 0.0, 0.0])
+    centre = np.array(
+        [everything[:, 0].mean(), middle, 0.0, 0.0, n, n, 0.0, 0.0, BULGE_PRIOR[0], BULGE_PRIOR[0]]
+    )
     return _Start(left, right, middle, np.log(height)), _Prior(centre, max(asymmetry, 1e-4))
 
 
@@ -465,65 +529,65 @@ class _Start:
             x0 = np.full_like(half, (self.left + self.right) / 2)
         else:
             x0 = self.right - half if self.right is not None else (self.left or 0.0) + half
-        shape = np.zeros((len(log_width), 9))
+        shape = np.zeros((len(log_width), SHAPES))
         shape[:, X0], shape[:, Y0], shape[:, HEIGHT] = x0, self.middle, self.log_height
         shape[:, UPPER] = shape[:, LOWER] = ROUNDNESS_PRIOR[0]
+        shape[:, BULGE_ENDS] = shape[:, BULGE_SIDES] = BULGE_PRIOR[0]
         return shape
 
 
+def _root(stations: _Stations, wobbles: _Wobbles) -> Floats:
+    """Return what whitens residuals to unit variance under the first of some wobbles, (M, M)."""
+    return np.asarray(stations.whiten[wobbles.kernel[0]] / np.sqrt(stations.variances(wobbles)[0])[:, None])
+
+
 def _climb(
-    stations: _Stations, prior: _Prior, log_width: Floats, shape: Floats, wobble: tuple[int, int], steps: int
+    points: Floats, root: Floats, prior: _Prior, log_width: Floats, shape: Floats, steps: int
 ) -> Floats:
-    """Fit the shape on every rung under one wobble (its kernel's and size's place) by damped Gauss-Newton."""
-    length, size = wobble
-    variance = SIZES_MM[size] ** 2 * stations.values[length] + 1
-    root = stations.whiten[length] / np.sqrt(variance)[:, None]
+    """Fit the shape on every rung by damped Gauss-Newton; ``root`` (M, M) whitens the residuals."""
     precision = 1 / prior.sd**2
     mean = prior.mean(log_width)
-    limit = np.array([10.0, 10.0, 0.05, 0.2, 0.4, 0.4, 0.05, 0.05, 0.1])
+    limit = np.array([10.0, 10.0, 0.05, 0.2, 0.4, 0.4, 0.05, 0.05, 0.02, 0.02])
     for _ in range(steps):
-        away, slopes = distances(stations.points, log_width, shape)
-        r, j = away @ root.T, root @ slopes
-        a = j.transpose(0, 2, 1) @ j + np.diag(precision)
-        b = (j.transpose(0, 2, 1) @ r[..., None])[..., 0] + precision * (shape - mean)
+        away, slopes = linearised(points, log_width, shape)
+        j = slopes @ root.T
+        a = j @ j.transpose(0, 2, 1) + np.diag(precision)
+        b = (j @ (away @ root.T)[..., None])[..., 0] + precision * (shape - mean)
         step = np.linalg.solve(a, b[..., None])[..., 0]
         shape = shape - step / np.maximum(1.0, np.abs(step / limit).max(axis=1, keepdims=True))
     return shape
 
 
-def _weigh(stations: _Stations, prior: _Prior, log_width: Floats, shape: Floats) -> _Ladder:
-    """Return the Gaussian posterior and the evidence of every rung x length x size (Laplace)."""
-    away, slopes = distances(stations.points, log_width, shape)
-    both = np.concatenate([slopes, away[..., None]], axis=-1)  # (G, M, 10)
-    turned = stations.whiten[:, None] @ both[None]  # (L, G, M, 10)
-    variance = SIZES_MM[:, None] ** 2 * stations.values[:, None] + 1  # (L, S, M)
-    weighted = turned[:, None].transpose(0, 1, 2, 4, 3) / variance[:, :, None, None]  # (L, S, G, 10, M)
-    normal = weighted @ turned[:, None]  # (L, S, G, 10, 10)
+UPPER_PAIRS = np.triu_indices(SHAPES + 1)
+PAIR_OF = np.zeros((SHAPES + 1, SHAPES + 1), dtype=np.intp)
+PAIR_OF[UPPER_PAIRS] = PAIR_OF.T[UPPER_PAIRS] = np.arange(len(UPPER_PAIRS[0]))
+"""The place of every product of two columns among those of the upper triangle."""
+
+
+def _weigh(
+    stations: _Stations, prior: _Prior, log_width: Floats, shape: Floats, wobbles: _Wobbles
+) -> _Ladder:
+    """Return the Gaussian posterior and the evidence of every rung under every wobble (Laplace)."""
+    away, slopes = linearised(stations.points, log_width, shape)
+    columns = np.concatenate([slopes, away[:, None]], axis=1)  # (G, 11, M)
+    variances = stations.variances(wobbles)
+    products = np.empty((len(wobbles.kernel), len(log_width), len(UPPER_PAIRS[0])))
+    for kernel in np.unique(wobbles.kernel):
+        white = columns @ stations.whiten[kernel].T
+        of = wobbles.kernel == kernel
+        pairs = white[:, UPPER_PAIRS[0]] * white[:, UPPER_PAIRS[1]]  # (G, 66, M)
+        summed = (1 / variances[of]) @ pairs.reshape(-1, pairs.shape[2]).T
+        products[of] = summed.reshape(-1, *pairs.shape[:2])
+    normal = products[..., PAIR_OF]  # (C, G, 11, 11)
     off = shape - prior.mean(log_width)
-    precision = 1 / prior.sd**2
-    a = normal[..., :9, :9] + np.diag(precision)
-    b = normal[..., :9, 9] + precision * off
+    inverse = 1 / prior.sd**2
+    a = normal[..., :SHAPES, :SHAPES] + np.diag(inverse)
+    b = normal[..., :SHAPES, SHAPES] + inverse * off
     solved = np.linalg.solve(a, b[..., None])[..., 0]
-    quad = normal[..., 9, 9] + (precision * off**2).sum(axis=-1) - (b * solved).sum(axis=-1)
-    upper = np.linalg.cholesky(a)
-    half_log_det = np.log(np.diagonal(upper, axis1=-2, axis2=-1)).sum(axis=-1)
-    log_noise = 0.5 * np.log(variance).sum(axis=-1)[:, :, None]
-    evidence = -0.5 * quad - log_noise - half_log_det + _log_wobble_prior()[stations.kernels][:, :, None]
-    root = np.linalg.inv(upper).swapaxes(-1, -2)
-    return _Ladder(
-        log_width=log_width,
-        log_evidence=np.moveaxis(evidence, 2, 0),
-        mean=np.moveaxis(shape - solved, 2, 0),
-        root=np.moveaxis(root, 2, 0),
-        log_det=np.moveaxis(half_log_det, 2, 0),
-    )
-
-
-def _log_wobble_prior() -> Floats:
-    """Return the log prior of every length x size of the wobble, (L, S), up to a constant."""
-    length = -0.5 * ((np.log(LENGTHS_MM) - LENGTH_PRIOR[0]) / LENGTH_PRIOR[1]) ** 2
-    size = -0.5 * ((np.log(SIZES_MM) - SIZE_PRIOR[0]) / SIZE_PRIOR[1]) ** 2
-    return np.asarray(length[:, None] + size)
+    misfit = normal[..., SHAPES, SHAPES] + prior.misfit(log_width, shape) - (b * solved).sum(axis=-1)
+    log_noise = np.log(variances).sum(axis=1, keepdims=True)
+    evidence = wobbles.log_prior[:, None] - 0.5 * (misfit + log_noise + np.linalg.slogdet(a)[1])
+    return _Ladder(log_width, wobbles, evidence, shape - solved, a)
 
 
 def _relaid(ladder: _Ladder) -> Floats:
@@ -541,41 +605,34 @@ def _draw(ladder: _Ladder, draws: int, rng: np.random.Generator) -> tuple[Outlin
     log_p = np.interp(fine, ladder.log_width, ladder.log_marginal)
     density = np.exp(log_p - log_p.max())
     cumulative = np.concatenate([[0.0], np.cumsum((density[1:] + density[:-1]) / 2)])
-    step = fine[1] - fine[0]
-    log_norm = np.log(cumulative[-1] * step)
     log_width = np.interp(rng.random(draws) * cumulative[-1], cumulative, fine)
     at = (log_width - ladder.log_width[0]) / (ladder.log_width[1] - ladder.log_width[0])
     rung = np.clip(np.floor(at + rng.random(draws)), 0, RUNGS - 1).astype(int)  # a neighbour, by nearness
-    flat = np.exp(ladder.log_evidence - ladder.log_marginal[:, None, None]).reshape(RUNGS, -1)
-    levels = np.cumsum(flat, axis=1)
-    cell = np.minimum((levels[rung] < rng.random(draws)[:, None]).sum(axis=1), flat.shape[1] - 1)
-    length, size = np.divmod(cell, len(SIZES_MM))
-    drift = np.gradient(ladder.mean, ladder.log_width, axis=0)
-    where = (rung, length, size)
-    z = rng.standard_normal((draws, 9))
-    mean = ladder.mean[where] + drift[where] * (log_width - ladder.log_width[rung])[:, None]
-    shape = mean + np.einsum("nij,nj->ni", ladder.root[where], z)
-    log_cell = np.log(np.maximum(flat[rung, cell], 1e-300))
-    log_proposal = (
-        np.interp(log_width, fine, log_p) - log_p.max() - log_norm + log_cell + ladder.log_det[where]
-    ) - 0.5 * (z**2).sum(axis=1)
-    return Outline(log_width, shape, SIZES_MM[size], length), log_proposal
+    share = np.exp(ladder.log_evidence - ladder.log_marginal)
+    levels = np.cumsum(share, axis=0)
+    cell = np.minimum((levels[:, rung] < rng.random(draws)).sum(axis=0), len(share) - 1)
+    lower = np.linalg.cholesky(ladder.precision)
+    root = np.linalg.inv(lower).swapaxes(-1, -2)
+    half_log_det = np.log(np.diagonal(lower, axis1=-2, axis2=-1)).sum(axis=-1)
+    drift = np.gradient(ladder.mean, ladder.log_width, axis=1)
+    z = rng.standard_normal((draws, SHAPES))
+    mean = ladder.mean[cell, rung] + drift[cell, rung] * (log_width - ladder.log_width[rung])[:, None]
+    shape = mean + (root[cell, rung] @ z[..., None])[..., 0]
+    log_proposal = np.interp(log_width, fine, log_p) + np.log(np.maximum(share[cell, rung], 1e-300))
+    log_proposal += half_log_det[cell, rung] - 0.5 * (z**2).sum(axis=1)
+    return Outline(log_width, shape, ladder.wobbles.at(cell)), log_proposal
 
 
 def _log_exact(outline: Outline, stations: _Stations, prior: _Prior, rows: NDArray[np.intp]) -> Floats:
     """Return the exact log posterior of some rows, up to a constant."""
-    log_width, shape = outline.log_width[rows], outline.shape[rows]
-    away, _ = distances(stations.points, log_width, shape)
-    length = outline.kernel[rows]
-    size = np.searchsorted(SIZES_MM, outline.size[rows] - 1e-9)
-    log_likelihood = np.empty(len(rows))
-    for at in range(len(LENGTHS_MM)):
-        of = length == at
-        variance = outline.size[rows][of, None] ** 2 * stations.values[at] + 1
-        white = away[of] @ stations.whiten[at].T
-        log_likelihood[of] = -0.5 * (white**2 / variance + np.log(variance)).sum(axis=1)
-    off = (shape - prior.mean(log_width)) / prior.sd
-    return np.asarray(log_likelihood - 0.5 * (off**2).sum(axis=1) + _log_wobble_prior()[length, size])
+    log_width, shape, wobbles = outline.log_width[rows], outline.shape[rows], outline.wobbles.at(rows)
+    away = distances(stations.points, log_width, shape)
+    variances = stations.variances(wobbles)
+    misfit = prior.misfit(log_width, shape) + np.log(variances).sum(axis=1)
+    for kernel in np.unique(wobbles.kernel):
+        of = wobbles.kernel == kernel
+        misfit[of] += ((away[of] @ stations.whiten[kernel].T) ** 2 / variances[of]).sum(axis=1)
+    return np.asarray(wobbles.log_prior - 0.5 * misfit)
 
 
 def _effective_share(log_weights: Floats) -> float:
@@ -599,19 +656,23 @@ def _holds(outline: Outline, breaks: Floats) -> Floats:
     """Return how probable it is, row by row, that the break lies inside the wobbling outline, (N,)."""
     if len(breaks) == 0:
         return np.ones(len(outline.log_width))
-    narrow = np.argsort(outline.log_width)[: max(len(outline.log_width) // 100, 10)]
-    if _inside(breaks, outline, narrow).min() > SURE:
-        return np.ones(len(outline.log_width))
-    return _inside(breaks, outline, np.arange(len(outline.log_width)))
+    directions = np.linspace(0, 2 * np.pi, 32, endpoint=False)
+    outermost = breaks[np.unique(np.argmax(breaks @ [np.cos(directions), np.sin(directions)], axis=0))]
+    narrow_first = np.argsort(outline.log_width)
+    inside = np.ones(len(narrow_first))
+    # from the narrowest up, a sixteenth at a time, until the break stands well within all of them
+    for rows in np.array_split(narrow_first, 16):
+        inside[rows] = _inside(outermost, outline, rows)
+        if inside[rows].min() > SURE:
+            break
+    return inside
 
 
 def _inside(breaks: Floats, outline: Outline, rows: NDArray[np.intp]) -> Floats:
     """Return how probable it is that the break lies inside the outline in some rows."""
-    directions = np.linspace(0, 2 * np.pi, 32, endpoint=False)
-    outermost = np.unique(np.argmax(breaks @ np.array([np.cos(directions), np.sin(directions)]), axis=0))
-    away, _ = distances(breaks[outermost], outline.log_width[rows], outline.shape[rows])
+    away = distances(breaks, outline.log_width[rows], outline.shape[rows])
     # the logistic form of the normal distribution (Bowling et al. 2009) is near enough for a soft wall
-    z = -away.max(axis=1) / outline.size[rows]
+    z = -away.max(axis=1) / SIZES_MM[outline.wobbles.size[rows]]
     return np.asarray(1 / (1 + np.exp(-np.clip(1.702 * z, -40, 40))))
 
 
@@ -621,4 +682,4 @@ def _resampled(outline: Outline, weights: Floats, rng: np.random.Generator) -> O
     levels = np.cumsum(weights) / weights.sum()
     rows = np.minimum(np.searchsorted(levels, (np.arange(draws) + rng.random()) / draws), draws - 1)
     rows = rng.permutation(rows)
-    return Outline(outline.log_width[rows], outline.shape[rows], outline.size[rows], outline.kernel[rows])
+    return Outline(outline.log_width[rows], outline.shape[rows], outline.wobbles.at(rows))

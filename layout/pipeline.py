@@ -162,15 +162,15 @@ def read_writing(measured: MeasuredView, rng: np.random.Generator) -> Writing:
         if entry.kind == "entry" and entry.column is not None:
             by_column.setdefault(entry.column, []).append(count)
     scale = measured.scale
-    spans = np.array(ends).reshape(-1, 2, 2) * scale.nominal_face_mm_per_px
+    spans = np.array(ends).reshape(-1, 2, 2) * scale.face.nominal_mm_per_px
     entries = MeasuredEntries(
         counts=np.array(counts, dtype=np.float64).reshape(-1, len(SignCounts._fields)),
         lengths=np.hypot(*(spans[:, 1] - spans[:, 0]).T),
         pointing=np.full(len(counts), measured.pointing_mm),
     )
-    pitch = None if measured.pitch is None else float(np.median(measured.pitch.pitch))
+    pitch = None if measured.pitch is None else float(measured.pitch.pitch.mean())
     prior = expect_full_digit(pitch, scaled=scale.known)
-    ratio = measured.mapped.face_ratio(np.zeros(2))
+    ratio = measured.mapped.face.local(np.zeros(2))
     return Writing(by_column, fit_sign_widths(entries, prior, ratio, rng), tuple(faults))
 
 

@@ -62,6 +62,10 @@ class Line:
         place = np.full_like(across, along)
         return np.stack([across, place] if self.runs == "vertical" else [place, across], axis=-1)
 
+    def mean_at(self, along: float) -> float:
+        """Return the mean of the draws across the run, at a place along it."""
+        return float(self.offset.mean() + self.slope.mean() * (along - self.middle))
+
 
 def orthogonal_line(points: Floats) -> tuple[Floats, Floats]:
     """Return the centroid and the unit direction of the line with the least squared distances from points.
@@ -105,9 +109,8 @@ def fit_lines(
     lines = []
     for (name, runs, points), trace, fit in zip(traces, prepared, fits, strict=True):
         z = rng.standard_normal((2, draws))
-        (l00, l10), l11 = fit.root[cell, :, 0].T, fit.root[cell, 1, 1]
-        offset = fit.mean[cell, 0] + l00 * z[0]
-        slope = fit.mean[cell, 1] + l10 * z[0] + l11 * z[1]
+        mean_offset, mean_slope, l00, _, l10, l11 = fit.parameters[:, cell]
+        offset, slope = mean_offset + l00 * z[0], mean_slope + l10 * z[0] + l11 * z[1]
         lines.append(_line(name, runs, points, trace, (offset, slope)))
     return lines
 
@@ -126,11 +129,13 @@ def _prepare(points: Floats, pointing_mm: float) -> _Trace:
 
 @dataclass(frozen=True, eq=False)
 class _GivenWobble:
-    """A line given each length x size of the wobble: evidence (L, S); offset and slope (cells, 2), (…, 2, 2)."""
+    """A line given each length x size of the wobble: evidence (L, S), and parameters (6, L S).
+
+    The parameters are the means of offset and slope, and the lower triangular root of their covariance.
+    """
 
     log_evidence: Floats
-    mean: Floats
-    root: Floats
+    parameters: Floats
 
 
 def _log_prior() -> Floats:
@@ -156,8 +161,7 @@ def _fit_given_wobble(trace: _Trace) -> _GivenWobble:
     log_det = np.log(variance).sum(axis=-1) + np.log(np.linalg.det(a))
     return _GivenWobble(
         log_evidence=-0.5 * (quad + log_det),
-        mean=mean.reshape(-1, 2),
-        root=np.linalg.cholesky(covariance).reshape(-1, 2, 2),
+        parameters=np.hstack([mean.reshape(-1, 2), np.linalg.cholesky(covariance).reshape(-1, 4)]).T.copy(),
     )
 
 
@@ -222,7 +226,7 @@ def fit_pitch(lines: list[Line], draws: int, rng: np.random.Generator) -> Pitch 
     if len(lines) < 2:
         return None
     across = float(np.mean([line.middle for line in lines]))
-    heights = np.array([float(np.median(line.at(across)[:, 1])) for line in lines])
+    heights = np.array([line.mean_at(across) for line in lines])
     order = np.argsort(heights)
     y = heights[order]
     if np.diff(y).min() <= 0:

@@ -64,14 +64,14 @@ def measure_view(
     for_scale, for_lines, for_pitch, for_extent = generators
     scale, notices = fit_scale(view, record.photograph_of(view).size, record.thickness, draws, for_scale)
     frame = find_frame(view, scale)
-    mapped = Mapped(scale, frame)
-    pointing_mm = pointing_of(view)[0] * scale.nominal_face_mm_per_px
+    mapped = Mapped.of(scale, frame)
+    pointing_mm = pointing_of(view)[0] * scale.face.nominal_mm_per_px
     traces, note = _traces(view, frame, scale)
     lines = fit_lines(traces, pointing_mm, draws, for_lines) if traces else []
     verticals = tuple(
         sorted(
             (line for line in lines if line.runs == "vertical"),
-            key=lambda line: float(np.median(line.at(0)[:, 0])),
+            key=lambda line: line.mean_at(0.0),
         )
     )
     horizontals = _lines_of_writing(view, lines)
@@ -90,7 +90,7 @@ def measure_view(
             for left, right in itertools.pairwise(verticals)
         ),
         pitch=pitch,
-        pitch_mm=None if pitch is None else pitch.pitch * mapped.face_ratio(_middle(horizontals)),
+        pitch_mm=None if pitch is None else pitch.pitch * mapped.face.local(_middle(horizontals)),
         polygon=polygon,
         preserved=None if polygon is None else _preserved(polygon, mapped, pointing_mm, draws, for_extent),
         notices=(*notices, *note, *_ambiguous(view, pitch), *_left_alone(view)),
@@ -106,11 +106,11 @@ def find_frame(view: View, scale: Scale) -> Frame:
     outline = [np.array(piece.points) for piece in view.outline if piece.points]
     rulings = [np.array(ruling.points) for ruling in view.rulings if ruling.points]
     if outline:
-        centroid, mm_per_px = polygon_centroid(np.vstack(outline)), scale.nominal_outline_mm_per_px
+        centroid, mm_per_px = polygon_centroid(np.vstack(outline)), scale.outline.nominal_mm_per_px
     elif rulings:
-        centroid, mm_per_px = np.vstack(rulings).mean(axis=0), scale.nominal_face_mm_per_px
+        centroid, mm_per_px = np.vstack(rulings).mean(axis=0), scale.face.nominal_mm_per_px
     else:
-        centroid, mm_per_px = scale.centre_px, scale.nominal_face_mm_per_px
+        centroid, mm_per_px = scale.centre_px, scale.face.nominal_mm_per_px
     turns = [
         _turn(np.array(ruling.points), ruling.runs) for ruling in view.rulings if len(ruling.points) > 1
     ] or [
@@ -138,7 +138,7 @@ def _traces(view: View, frame: Frame, scale: Scale) -> tuple[list[tuple[str, str
     for ruling in view.rulings:
         points = np.array(ruling.points).reshape(-1, 2)
         if _is_line(ruling, points):
-            traces.append((ruling.id, ruling.runs, frame.to_mm(points, scale.nominal_face_mm_per_px)))
+            traces.append((ruling.id, ruling.runs, frame.to_mm(points, scale.face.nominal_mm_per_px)))
         else:
             text = f"needs two points or more that are apart, has {len(points)}"
             notes.append(Missing(f"rulings[{ruling.id}]", text))
@@ -161,9 +161,7 @@ def _lines_of_writing(view: View, lines: list[Line]) -> list[Line]:
 
 def _middle(lines: list[Line]) -> Floats:
     """Return the middle of some horizontal lines, shape (2,)."""
-    return np.array(
-        [np.mean([line.middle for line in lines]), np.mean([np.median(line.offset) for line in lines])]
-    )
+    return np.mean([(line.middle, line.mean_at(line.middle)) for line in lines], axis=0)
 
 
 def _polygon(view: View, frame: Frame, scale: Scale) -> Floats | None:
@@ -175,14 +173,14 @@ def _polygon(view: View, frame: Frame, scale: Scale) -> Floats | None:
     gap = float(np.hypot(*(points[0] - points[-1])))
     if gap > 0.1 * float(np.ptp(points, axis=0).max()):
         return None
-    return frame.to_mm(points, scale.nominal_outline_mm_per_px)
+    return frame.to_mm(points, scale.outline.nominal_mm_per_px)
 
 
 def _preserved(
     polygon: Floats, mapped: Mapped, pointing_mm: float, draws: int, rng: np.random.Generator
 ) -> Preserved:
     """Return the surviving width, height and area; each extent has the pointing error of two points."""
-    ratio = mapped.outline_ratio(np.zeros(2))
+    ratio = mapped.outline.local(np.zeros(2))
     width, height = np.ptp(polygon, axis=0)
     errors = rng.normal(0.0, np.sqrt(2) * pointing_mm, (2, draws))
     area = polygon_area(polygon)
@@ -236,7 +234,7 @@ def view_result(measured: MeasuredView) -> tuple[ViewResult, list[Missing]]:
         missing.append(Missing("line_pitch", "needs two horizontal rulings or lines of writing"))
     if measured.preserved is None:
         missing.append(Missing("preserved", "needs an outline that closes around the fragment"))
-    origin_px = measured.frame.to_px(np.zeros(2), measured.scale.nominal_outline_mm_per_px)
+    origin_px = measured.frame.to_px(np.zeros(2), measured.scale.outline.nominal_mm_per_px)
     return (
         ViewResult(
             face=face,

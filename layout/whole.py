@@ -92,7 +92,7 @@ def reconstruct(
 
 def _trace(measured: MeasuredView) -> tuple[Traced, list[Notice]]:
     """Return the view's sound edges and its break in the face frame."""
-    view, mm_per_px = measured.view, measured.scale.nominal_outline_mm_per_px
+    view, mm_per_px = measured.view, measured.scale.outline.nominal_mm_per_px
     points = [
         (piece, measured.frame.to_mm(np.array(piece.points), mm_per_px))
         for piece in view.outline
@@ -100,7 +100,7 @@ def _trace(measured: MeasuredView) -> tuple[Traced, list[Notice]]:
     ]
     edges = tuple((p.edge, mm) for p, mm in points if p.edge != "break" and p.state == "sound")
     breaks = [mm for p, mm in points if p.edge == "break"]
-    pointing_mm = measured.pointing_mm * mm_per_px / measured.scale.nominal_face_mm_per_px
+    pointing_mm = measured.pointing_mm * mm_per_px / measured.scale.face.nominal_mm_per_px
     return Traced(edges, np.vstack(breaks) if breaks else np.empty((0, 2)), pointing_mm), []
 
 
@@ -151,7 +151,7 @@ def _vertical_axis(outline: Outline, mapped: Mapped, extent: Extent) -> AxisResu
     at_origin = shape[:, X0] + np.tan(shape[:, TURN]) * shape[:, Y0]
     width = Quantity("mm", extent.width)
     return AxisResult(
-        position=Quantity("mm", at_origin * mapped.outline_ratio(np.zeros(2))),
+        position=Quantity("mm", at_origin * mapped.outline.local(np.zeros(2))),
         angle_deg=Quantity("deg", np.degrees(shape[:, TURN])),
         evidence=(AxisEvidence("outline", width, 1.0),),
     )
@@ -159,7 +159,7 @@ def _vertical_axis(outline: Outline, mapped: Mapped, extent: Extent) -> AxisResu
 
 def _drawn(outline: Outline, measured: MeasuredView) -> ReconstructedOutline:
     """Return the outline as polygons: the median, and the edges of the 95 % band."""
-    mm_per_px = measured.scale.nominal_outline_mm_per_px
+    mm_per_px = measured.scale.outline.nominal_mm_per_px
     median, inner, outer = (outline.polygon(quantile) for quantile in (0.5, *BAND))
     return ReconstructedOutline(
         points_mm=median,
@@ -170,7 +170,7 @@ def _drawn(outline: Outline, measured: MeasuredView) -> ReconstructedOutline:
 
 def _ratio_at_centre(outline: Outline, mapped: Mapped) -> Floats:
     """Return each row's scale over the nominal one at the whole outline's centre."""
-    return mapped.outline_ratio(np.median(outline.shape[:, [X0, Y0]], axis=0))
+    return mapped.outline.local(outline.shape[:, [X0, Y0]].mean(axis=0))
 
 
 def _area(outline: Outline, mapped: Mapped) -> Floats:

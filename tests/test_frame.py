@@ -8,7 +8,7 @@ from typing import Any
 import numpy as np
 import pytest
 
-from layout.frame import Frame, Scale, fit_scale, project
+from layout.frame import Frame, Plane, Scale, find_homography, fit_scale
 from layout.notices import Caveat, Notice
 from layout.record.model import Record
 
@@ -42,7 +42,7 @@ def fit(
 
 def face_of(scale: Scale) -> float:
     """Return the median mm per px at the face, at the centre."""
-    return float(np.median(scale.local(CENTRE, scale.face_mm)))
+    return float(np.median(scale.face.local(CENTRE)))
 
 
 def with_(**changes: Any) -> dict[str, Any]:  # noqa: ANN401
@@ -54,13 +54,26 @@ def test_rays_meet_their_plane() -> None:
     rng = np.random.default_rng(0)
     pixels = rng.uniform(-2000, 2000, (5, 2))
     a, b, distance, height = 0.04, -0.03, 600.0, 12.0
-    seen = project(
-        pixels, np.full(1, 0.03), np.array([[a, b]]), np.full(1, 1 / distance), np.full(1, height)
-    )[0]
+    one = np.ones(1)
+    plane = Plane(find_homography(0.03 * one, np.array([[a, b]]), one / distance, height * one), 0.03)
+    seen = plane.map(pixels)[0]
     n = np.array([a, b, np.sqrt(1 - a * a - b * b)])
     e1 = np.array([n[2], 0.0, -a]) / np.hypot(n[2], a)
     points = seen[:, :1] * e1 + seen[:, 1:] * np.cross(n, e1) - height * n + [0, 0, distance]
     assert points[:, :2] / points[:, 2:] * (distance / 0.03) == pytest.approx(pixels)
+
+
+def test_the_local_scale_is_that_of_a_small_square() -> None:
+    rng = np.random.default_rng(1)
+    tilt, one = rng.normal(0.0, 0.03, (5, 2)), np.ones(5)
+    plane = Plane(find_homography(0.03 * one, tilt, one / 500, 12 * one), 0.03)
+    at = np.array([700.0, 3100.0])
+    corners = plane.map(at + np.array([[-0.5, 0.0], [0.5, 0.0], [0.0, -0.5], [0.0, 0.5]]))
+    (across_x, across_y), (down_x, down_y) = (
+        (corners[:, 1] - corners[:, 0]).T,
+        (corners[:, 3] - corners[:, 2]).T,
+    )
+    assert plane.local(at) ** 2 == pytest.approx(across_x * down_y - across_y * down_x, rel=1e-6)
 
 
 def test_a_face_ten_millimetres_nearer_at_400_is_two_and_a_half_per_cent_larger() -> None:
@@ -70,9 +83,9 @@ def test_a_face_ten_millimetres_nearer_at_400_is_two_and_a_half_per_cent_larger(
 
 def test_the_outline_lies_half_the_thickness_below_the_face() -> None:
     scale, _ = fit(SQUARE)
-    outline = np.median(scale.local(CENTRE, scale.outline_mm))
+    outline = np.median(scale.outline.local(CENTRE))
     assert outline == pytest.approx(0.04 * (1 - (10 - 12) / 400), rel=1e-3)
-    assert scale.nominal_outline_mm_per_px == pytest.approx(outline, rel=1e-3)
+    assert scale.outline.nominal_mm_per_px == pytest.approx(outline, rel=1e-3)
 
 
 def test_what_is_not_given_is_assumed_and_widens_the_interval() -> None:
@@ -84,7 +97,7 @@ def test_what_is_not_given_is_assumed_and_widens_the_interval() -> None:
         "scale.distance",
         "scale.tilt",
     }
-    wide, narrow = (one.local(CENTRE, one.face_mm).std() for one in (scale, sharp))
+    wide, narrow = (one.face.local(CENTRE).std() for one in (scale, sharp))
     assert wide > 3 * narrow
 
 
@@ -93,9 +106,7 @@ def test_tilt_widens_the_interval_of_a_face_away_from_the_bar() -> None:
     tilted, _ = fit(with_(tilt_sd_deg=1.5))
     # the bar stands 40 mm below the centre and 15 mm to the left of it: at a tilt across it all its lengths
     # change by 40 sin / 400, at a tilt along it those along it by twice 15 sin / 400
-    added = np.sqrt(
-        tilted.local(CENTRE, tilted.face_mm).std() ** 2 - square.local(CENTRE, square.face_mm).std() ** 2
-    )
+    added = np.sqrt(tilted.face.local(CENTRE).std() ** 2 - square.face.local(CENTRE).std() ** 2)
     assert added / 0.039 == pytest.approx(np.hypot(40, 2 * 15) * np.sin(np.deg2rad(1.5)) / 400, rel=0.1)
 
 
@@ -103,7 +114,7 @@ def test_a_shared_scale_error_does_not_average_down() -> None:
     # GUM H.3 (JCGM 100:2008): a systematic uncertainty common to all points stays whole in their mean
     scale, _ = fit(with_(below_face={"mm": 10.0, "sd": 2.0}))
     points = np.array([[1000.0, 2000.0], [3000.0, 2000.0], [5000.0, 2000.0]])
-    mapped = scale.map(points, scale.face_mm)
+    mapped = scale.face.map(points)
     one = (mapped[:, 1] - mapped[:, 0])[:, 0]
     mean = (mapped[:, 2] - mapped[:, 0])[:, 0] / 2
     assert mean.std() == pytest.approx(one.std(), rel=1e-6)
@@ -139,7 +150,7 @@ def test_a_length_known_on_the_object_lies_in_the_face() -> None:
 def test_a_scanner_has_one_scale_at_every_height() -> None:
     scale, notices = fit({"ppi": 600})
     assert face_of(scale) == pytest.approx(25.4 / 600, rel=1e-3)
-    assert np.array_equal(scale.local(CENTRE, scale.face_mm), scale.local(CENTRE, scale.outline_mm))
+    assert np.array_equal(scale.face.local(CENTRE), scale.outline.local(CENTRE))
     assert "scale.ppi" in {getattr(note, "code", "") for note in notices}
 
 
@@ -157,7 +168,7 @@ def test_the_scale_of_noisy_marks_is_covered() -> None:
         rng = np.random.default_rng(seed)
         marks = [{**mark, "at": [float(c + rng.normal()) for c in mark["at"]]} for mark in MARKS]  # type: ignore[attr-defined]
         scale, _ = fit(with_(marks=marks), draws=1000)
-        low, high = np.percentile(scale.local(CENTRE, scale.face_mm), [2.5, 97.5])
+        low, high = np.percentile(scale.face.local(CENTRE), [2.5, 97.5])
         hits += low <= 0.039 <= high
     limits = exact_limits(hits, 300, 0.998)
     assert limits[1] > 0.93
