@@ -88,7 +88,7 @@ class Outline:
 
     log_width: Floats
     shape: Floats
-    wobbles: _Wobbles
+    wobbles: Wobbles
 
     @property
     def halves(self) -> tuple[Floats, Floats, Floats, Floats]:
@@ -131,8 +131,8 @@ class Outline:
         t = np.linspace(0, 2 * np.pi, points, endpoint=False)
         cos, sin = np.cos(t), np.sin(t)
         n = np.exp(np.where(sin < 0, shape[0, UPPER], shape[0, LOWER]))
-        full_u = u = np.sign(cos) * np.abs(cos) ** (2 / n)
-        full_v = v = np.sign(sin) * np.abs(sin) ** (2 / n)
+        radius = (np.abs(cos) ** n + np.abs(sin) ** n) ** (-1 / n)
+        full_u, full_v = u, v = cos * radius, sin * radius
         for _ in range(20):  # each step brings the point nearer by a factor of about the bulge
             u, v = full_u * (1 - shape[0, BULGE_SIDES] * v**2), full_v * (1 - shape[0, BULGE_ENDS] * u**2)
         own = np.stack([u * np.where(cos < 0, left, right), v * np.where(sin < 0, upper, lower)], axis=-1)
@@ -317,26 +317,26 @@ class _Stations:
         values, bases = np.linalg.eigh(inner @ _correlations(apart) @ inner.T)
         return cls(points, bases.transpose(0, 2, 1) @ inner, np.maximum(values, 0.0))
 
-    def variances(self, wobbles: _Wobbles) -> Floats:
+    def variances(self, wobbles: Wobbles) -> Floats:
         """Return the variances of the whitened residuals under some wobbles, (C, M)."""
         return np.asarray(SIZES_MM[wobbles.size, None] ** 2 * self.values[wobbles.kernel] + 1)
 
 
 @dataclass(frozen=True, eq=False)
-class _Wobbles:
+class Wobbles:
     """Some wobbles: the places of their kernels and sizes on their lists, each of shape (C,)."""
 
     kernel: NDArray[np.intp]
     size: NDArray[np.intp]
 
     @classmethod
-    def every(cls) -> _Wobbles:
+    def every(cls) -> Wobbles:
         """Return all of them."""
         return cls(*np.divmod(np.arange(len(LENGTHS_MM) * len(SIZES_MM)), len(SIZES_MM)))
 
-    def at(self, places: NDArray[np.intp]) -> _Wobbles:
+    def at(self, places: NDArray[np.intp]) -> Wobbles:
         """Return those at some places."""
-        return _Wobbles(self.kernel[places], self.size[places])
+        return Wobbles(self.kernel[places], self.size[places])
 
     @property
     def log_prior(self) -> Floats:
@@ -423,7 +423,7 @@ class _Ladder:
     """
 
     log_width: Floats
-    wobbles: _Wobbles
+    wobbles: Wobbles
     log_evidence: Floats
     mean: Floats
     precision: Floats
@@ -434,7 +434,7 @@ class _Ladder:
         return np.asarray(np.logaddexp.reduce(self.log_evidence, axis=0))
 
     @property
-    def probable(self) -> _Wobbles:
+    def probable(self) -> Wobbles:
         """The wobbles that matter, the most probable first."""
         over_rungs = np.logaddexp.reduce(self.log_evidence, axis=1)
         order = np.argsort(-over_rungs)
@@ -469,7 +469,7 @@ def fit_outline(
     misfit = ((distances(points, log_width, shape) / ROUGH_MM) ** 2).sum(axis=1)
     best = [int((misfit + prior.misfit(log_width, shape)).argmin())]
     stations = _Stations.along(points, noise, feet(points, log_width[best], shape[best]))
-    wobbles = _Wobbles.every()
+    wobbles = Wobbles.every()
     shape = _climb(points, _root(stations, wobbles.at(TYPICAL)), prior, log_width, shape, WARM_STEPS)
     ladder = _weigh(stations, prior, log_width, shape, wobbles)
     log_width, wobbles = _relaid(ladder), ladder.probable
@@ -536,7 +536,7 @@ class _Start:
         return shape
 
 
-def _root(stations: _Stations, wobbles: _Wobbles) -> Floats:
+def _root(stations: _Stations, wobbles: Wobbles) -> Floats:
     """Return what whitens residuals to unit variance under the first of some wobbles, (M, M)."""
     return np.asarray(stations.whiten[wobbles.kernel[0]] / np.sqrt(stations.variances(wobbles)[0])[:, None])
 
@@ -564,9 +564,7 @@ PAIR_OF[UPPER_PAIRS] = PAIR_OF.T[UPPER_PAIRS] = np.arange(len(UPPER_PAIRS[0]))
 """The place of every product of two columns among those of the upper triangle."""
 
 
-def _weigh(
-    stations: _Stations, prior: _Prior, log_width: Floats, shape: Floats, wobbles: _Wobbles
-) -> _Ladder:
+def _weigh(stations: _Stations, prior: _Prior, log_width: Floats, shape: Floats, wobbles: Wobbles) -> _Ladder:
     """Return the Gaussian posterior and the evidence of every rung under every wobble (Laplace)."""
     away, slopes = linearised(stations.points, log_width, shape)
     columns = np.concatenate([slopes, away[:, None]], axis=1)  # (G, 11, M)

@@ -161,7 +161,7 @@ def _lines_of_writing(view: View, lines: list[Line]) -> list[Line]:
 
 def _middle(lines: list[Line]) -> Floats:
     """Return the middle of some horizontal lines, shape (2,)."""
-    return np.mean([(line.middle, line.mean_at(line.middle)) for line in lines], axis=0)
+    return np.asarray(np.mean([(line.middle, line.mean_at(line.middle)) for line in lines], axis=0))
 
 
 def _polygon(view: View, frame: Frame, scale: Scale) -> Floats | None:

@@ -6,7 +6,17 @@ import numpy as np
 import pytest
 
 from layout.lengths import polygon_area
-from layout.outline import Outline, Traced, distances, feet, fit_outline, matern32, matern52
+from layout.outline import (
+    Outline,
+    Traced,
+    Wobbles,
+    distances,
+    feet,
+    fit_outline,
+    linearised,
+    matern32,
+    matern52,
+)
 from layout.quantity import Floats
 from tests.coverage import exact_limits
 
@@ -62,7 +72,25 @@ def at(values: list[float], width: float = WIDTH) -> tuple[Floats, Floats]:
     return np.array([np.log(width)]), np.array([values])
 
 
-SHAPE = [1.0, -2.0, 0.02, float(np.log(HEIGHT)), float(np.log(3.5)), float(np.log(4.5)), 0.01, -0.02, 0.05]
+SHAPE = [
+    1.0,
+    -2.0,
+    0.02,
+    float(np.log(HEIGHT)),
+    float(np.log(3.5)),
+    float(np.log(4.5)),
+    0.01,
+    -0.02,
+    0.05,
+    0.04,
+]
+
+
+def outline_of(values: list[float], width: float = WIDTH) -> Outline:
+    """Return an outline whose draws are all the same."""
+    log_width, shape = at(values, width)
+    zero = np.zeros(20, dtype=np.intp)
+    return Outline(np.repeat(log_width, 20), np.repeat(shape, 20, axis=0), Wobbles(zero, zero))
 
 
 def test_an_exact_superellipse_gives_its_width_and_height() -> None:
@@ -97,41 +125,44 @@ def test_more_lost_is_less_sure() -> None:
 @pytest.mark.parametrize(("n", "area"), [(4.0, 3.708149), (2.5, 3.380935), (2.0, np.pi)])
 def test_the_area_of_a_superellipse(n: float, area: float) -> None:
     # 4 a b G(1 + 1/n)^2 / G(1 + 2/n), an identity; values as in CHECKS (curves)
-    shape = np.array([[0, 0, 0, np.log(2.0), np.log(n), np.log(n), 0, 0, 0]])
-    outline = Outline(np.log([2.0]), shape, np.ones(1), np.zeros(1, dtype=np.intp))
+    log_n = float(np.log(n))
+    outline = outline_of([0, 0, 0, float(np.log(2.0)), log_n, log_n, 0, 0, 0, 0], 2.0)
     assert outline.area()[0] == pytest.approx(area, abs=5e-7)
 
 
 def test_the_polygon_has_the_area_of_the_formula() -> None:
-    log_width, shape = at(SHAPE)
-    outline = Outline(
-        np.repeat(log_width, 20), np.repeat(shape, 20, axis=0), np.ones(20), np.zeros(20, dtype=np.intp)
-    )
-    assert polygon_area(outline.polygon(0.5, 4000)) == pytest.approx(outline.area()[0], rel=1e-3)
+    for end, side in ((0.0, 0.0), (0.05, 0.04), (0.1, 0.1), (-0.02, 0.03)):
+        outline = outline_of([*SHAPE[:8], end, side])
+        assert polygon_area(outline.polygon(0.5, 4000)) == pytest.approx(outline.area()[0], rel=2e-3)
 
 
 def test_tangents_touch_the_polygon() -> None:
     log_width, shape = at(SHAPE)
-    outline = Outline(
-        np.repeat(log_width, 20), np.repeat(shape, 20, axis=0), np.ones(20), np.zeros(20, dtype=np.intp)
-    )
-    away, _ = distances(outline.tangents()[0], log_width, shape)
-    assert away == pytest.approx(0.0, abs=1e-9)
-    away, _ = distances(outline.polygon(0.5), log_width, shape)
-    assert np.abs(away).max() < 1e-6
+    outline = outline_of(SHAPE)
+    assert distances(outline.tangents()[0], log_width, shape) == pytest.approx(0.0, abs=1e-9)
+    assert np.abs(distances(outline.polygon(0.5), log_width, shape)).max() < 1e-6
+
+
+def test_bulging_sides_fall_back_towards_the_corners() -> None:
+    # with n large the sides are straight but for the bulge: at half the half-height they fall back by a quarter of it
+    log_n = float(np.log(60.0))
+    right = outline_of([0, 0, 0, float(np.log(HEIGHT)), log_n, log_n, 0, 0, 0, 0.08]).polygon(0.5, 8000)
+    right = right[right[:, 0] > 0]
+    at_half = np.interp(HEIGHT / 4, *right[np.argsort(right[:, 1])][:, ::-1].T)
+    assert at_half == pytest.approx(WIDTH / 2 * (1 - 0.08 / 4), rel=1e-3)
 
 
 def test_slopes_are_those_of_the_distances() -> None:
     points = np.array([[40.0, 30.0], [50.0, -20.0], [20.0, 54.0], [43.0, 45.0], [-30.0, -55.0]])
     log_width, shape = at(SHAPE)
-    away, slopes = distances(points, log_width, shape)
+    away, slopes = linearised(points, log_width, shape)
     for parameter in range(shape.shape[1]):
         step = np.zeros_like(shape)
         step[0, parameter] = 1e-5
-        ahead, behind = (distances(points, log_width, shape + sign * step)[0] for sign in (1, -1))
+        ahead, behind = (distances(points, log_width, shape + sign * step) for sign in (1, -1))
         # exact on the curve; a point r away from it is off by r over the radius of curvature
         near = np.abs(away[0]) < 5
-        assert slopes[0, near, parameter] == pytest.approx(
+        assert slopes[0, parameter, near] == pytest.approx(
             (ahead - behind)[0, near] / 2e-5, rel=0.1, abs=0.05
         )
 
@@ -139,7 +170,7 @@ def test_slopes_are_those_of_the_distances() -> None:
 def test_feet_lie_on_the_outline() -> None:
     log_width, shape = at(SHAPE)
     points = np.array([[52.0, 10.0], [40.0, 47.0], [0.0, -55.0]])
-    away, _ = distances(feet(points, log_width, shape), log_width, shape)
+    away = distances(feet(points, log_width, shape), log_width, shape)
     assert np.abs(away).max() < 0.02
 
 
