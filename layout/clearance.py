@@ -85,12 +85,12 @@ def find_widest(entries: Sequence[SignCounts], widths: SignWidths) -> Floats:
         In full digits, shape (N,); zero where nothing is written.
     """
     # entries first: a maximum over rows of contiguous draws is several times faster
-    return np.asarray((_undominated(np.array(entries, dtype=np.float64)) @ widths.ratios.T).max(axis=0))
+    return np.asarray((_undominated(entries) @ widths.ratios.T).max(axis=0))
 
 
-def _undominated(counts: Floats) -> Floats:
+def _undominated(entries: Sequence[SignCounts]) -> Floats:
     """Return the entries that can be the widest: those of which no other has as many signs of every kind."""
-    different = np.unique(counts, axis=0)
+    different = np.array(sorted(set(entries)), dtype=np.float64)
     covered = (different[:, None] <= different).all(axis=2)
     undominated: Floats = different[covered.sum(axis=1) == 1]
     return undominated

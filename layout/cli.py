@@ -7,6 +7,7 @@ exists to report; 2: the input or the call is wrong, which is said in one line f
 from __future__ import annotations
 
 import json
+import os
 from pathlib import Path
 from typing import TYPE_CHECKING, Annotated
 
@@ -47,6 +48,8 @@ AsJson = Annotated[bool, typer.Option("--json", help="print JSON, for programs")
 def main(arguments: list[str] | None = None) -> int:
     """Run the command and return its exit code; what is wrong is said in one line for each fault."""
     speak_utf8()
+    # looking for plugins of pydantic among all installed packages takes longer than reading a record
+    os.environ.setdefault("PYDANTIC_DISABLE_PLUGINS", "__all__")
     try:
         code = app(arguments, prog_name="layout", standalone_mode=False)
     except LayoutError as error:

@@ -4,7 +4,6 @@ from __future__ import annotations
 
 import contextlib
 import os
-import secrets
 import stat
 from pathlib import Path
 
@@ -20,7 +19,7 @@ def replace_file(path: Path, data: bytes) -> None:
         If the file cannot be written; what was there before is then untouched.
     """
     path = path.resolve()
-    temporary = path.with_name(f".{path.name}.{secrets.token_hex(4)}.tmp")
+    temporary = path.with_name(f".{path.name}.{os.urandom(4).hex()}.tmp")
     try:
         with temporary.open("xb") as file:
             if path.exists():

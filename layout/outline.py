@@ -26,11 +26,11 @@ import numpy as np
 from numpy.typing import NDArray
 
 from layout.notices import Caveat, warn
-from layout.quantity import Floats
+from layout.quantity import Floats, quantiles
 
 STATIONS = 60
 FIRST_RUNGS, RUNGS = 18, 22
-STEPS, WARM_STEPS = 8, 4
+STEPS, WARM_STEPS = 8, 3
 LENGTHS_MM = np.array([3.5, 7.0, 14.0, 5.0, 12.0])
 ROUGH = (False, False, False, True, True)
 LENGTH_PRIOR = (np.log(8.0), 0.5)
@@ -38,7 +38,7 @@ SIZES_MM = np.geomspace(0.08, 1.6, 9)
 SIZE_PRIOR = (np.log(0.35), 0.5)
 TYPICAL = np.array([len(SIZES_MM) + 4])
 """The place of 7 mm and 0.36 mm among all wobbles."""
-ROUGH_MM = 0.4
+APART, ROUGH_MM = 3, 0.4
 NEGLIGIBLE = 9.0
 ROUNDNESS_PRIOR = (np.log(3.5), 0.5)
 MISFIT_MM, MISFIT_LENGTH_MM = 0.07, 25.0
@@ -50,7 +50,7 @@ WIDEST = 6.0
 """How many times the surviving width the ladder reaches."""
 CLEAR_MM = 5.0
 NO_MM = 1e-7
-CHECKED = 300
+CHECKED = 200
 ENOUGH, TOO_FEW = 0.5, 0.1
 IMPOSSIBLE, SURE = 1e-3, 0.9999
 
@@ -465,8 +465,9 @@ def fit_outline(
     start, prior = _begin(traced, asymmetry)
     seen = float(np.ptp(np.vstack([points, traced.breaks]), axis=0)[0])
     log_width = np.linspace(np.log(0.97 * seen), np.log(WIDEST * seen), FIRST_RUNGS)
-    shape = _climb(points, np.eye(len(points)) / ROUGH_MM, prior, log_width, start(log_width), STEPS)
-    misfit = ((distances(points, log_width, shape) / ROUGH_MM) ** 2).sum(axis=1)
+    apart = points[::APART]
+    shape = _climb(apart, np.eye(len(apart)) / ROUGH_MM, prior, log_width, start(log_width), STEPS)
+    misfit = ((distances(apart, log_width, shape) / ROUGH_MM) ** 2).sum(axis=1)
     best = [int((misfit + prior.misfit(log_width, shape)).argmin())]
     stations = _Stations.along(points, noise, feet(points, log_width[best], shape[best]))
     wobbles = Wobbles.every()
@@ -501,11 +502,15 @@ def _begin(traced: Traced, asymmetry: float) -> tuple[_Start, _Prior]:
         edges.setdefault(name, []).append(points)
     found = {name: np.vstack(points) for name, points in edges.items()}
     everything = np.vstack([points for _, points in traced.pieces])
-    top = float(np.median(found["upper"][:, 1])) if "upper" in found else float(everything[:, 1].min())
-    bottom = float(np.median(found["lower"][:, 1])) if "lower" in found else float(everything[:, 1].max())
+
+    def at(name: str, axis: int, share: float) -> float | None:
+        return float(quantiles(found[name][:, axis], (share,))[0]) if name in found else None
+
+    top, bottom = at("upper", 1, 0.5), at("lower", 1, 0.5)
+    top = float(everything[:, 1].min()) if top is None else top
+    bottom = float(everything[:, 1].max()) if bottom is None else bottom
     height = max(bottom - top, 5.0)
-    left = float(np.percentile(found["left"][:, 0], 10)) if "left" in found else None
-    right = float(np.percentile(found["right"][:, 0], 90)) if "right" in found else None
+    left, right = at("left", 0, 0.1), at("right", 0, 0.9)
     n = ROUNDNESS_PRIOR[0]
     middle = (top + bottom) / 2
     centre = np.array(
@@ -558,25 +563,16 @@ def _climb(
     return shape
 
 
-UPPER_PAIRS = np.triu_indices(SHAPES + 1)
-PAIR_OF = np.zeros((SHAPES + 1, SHAPES + 1), dtype=np.intp)
-PAIR_OF[UPPER_PAIRS] = PAIR_OF.T[UPPER_PAIRS] = np.arange(len(UPPER_PAIRS[0]))
-"""The place of every product of two columns among those of the upper triangle."""
-
-
 def _weigh(stations: _Stations, prior: _Prior, log_width: Floats, shape: Floats, wobbles: Wobbles) -> _Ladder:
     """Return the Gaussian posterior and the evidence of every rung under every wobble (Laplace)."""
     away, slopes = linearised(stations.points, log_width, shape)
     columns = np.concatenate([slopes, away[:, None]], axis=1)  # (G, 11, M)
     variances = stations.variances(wobbles)
-    products = np.empty((len(wobbles.kernel), len(log_width), len(UPPER_PAIRS[0])))
-    for kernel in np.unique(wobbles.kernel):
+    normal = np.empty((len(wobbles.kernel), len(log_width), SHAPES + 1, SHAPES + 1))
+    for kernel in set(wobbles.kernel.tolist()):
         white = columns @ stations.whiten[kernel].T
         of = wobbles.kernel == kernel
-        pairs = white[:, UPPER_PAIRS[0]] * white[:, UPPER_PAIRS[1]]  # (G, 66, M)
-        summed = (1 / variances[of]) @ pairs.reshape(-1, pairs.shape[2]).T
-        products[of] = summed.reshape(-1, *pairs.shape[:2])
-    normal = products[..., PAIR_OF]  # (C, G, 11, 11)
+        normal[of] = (white / variances[of, None, None]) @ white.transpose(0, 2, 1)
     off = shape - prior.mean(log_width)
     inverse = 1 / prior.sd**2
     a = normal[..., :SHAPES, :SHAPES] + np.diag(inverse)
@@ -617,7 +613,7 @@ def _draw(ladder: _Ladder, draws: int, rng: np.random.Generator) -> tuple[Outlin
     mean = ladder.mean[cell, rung] + drift[cell, rung] * (log_width - ladder.log_width[rung])[:, None]
     shape = mean + (root[cell, rung] @ z[..., None])[..., 0]
     log_proposal = np.interp(log_width, fine, log_p) + np.log(np.maximum(share[cell, rung], 1e-300))
-    log_proposal += half_log_det[cell, rung] - 0.5 * (z**2).sum(axis=1)
+    log_proposal += half_log_det[cell, rung] - 0.5 * np.einsum("ni,ni->n", z, z)
     return Outline(log_width, shape, ladder.wobbles.at(cell)), log_proposal
 
 
@@ -627,7 +623,7 @@ def _log_exact(outline: Outline, stations: _Stations, prior: _Prior, rows: NDArr
     away = distances(stations.points, log_width, shape)
     variances = stations.variances(wobbles)
     misfit = prior.misfit(log_width, shape) + np.log(variances).sum(axis=1)
-    for kernel in np.unique(wobbles.kernel):
+    for kernel in set(wobbles.kernel.tolist()):
         of = wobbles.kernel == kernel
         misfit[of] += ((away[of] @ stations.whiten[kernel].T) ** 2 / variances[of]).sum(axis=1)
     return np.asarray(wobbles.log_prior - 0.5 * misfit)
@@ -655,7 +651,8 @@ def _holds(outline: Outline, breaks: Floats) -> Floats:
     if len(breaks) == 0:
         return np.ones(len(outline.log_width))
     directions = np.linspace(0, 2 * np.pi, 32, endpoint=False)
-    outermost = breaks[np.unique(np.argmax(breaks @ [np.cos(directions), np.sin(directions)], axis=0))]
+    reaching = np.argmax(breaks @ [np.cos(directions), np.sin(directions)], axis=0)
+    outermost = breaks[sorted(set(reaching.tolist()))]
     narrow_first = np.argsort(outline.log_width)
     inside = np.ones(len(narrow_first))
     # from the narrowest up, a sixteenth at a time, until the break stands well within all of them

@@ -191,8 +191,8 @@ def _learn(measured: MeasuredView, writing: Writing, rng: np.random.Generator) -
     """Learn the scribe's clearance from the surviving columns."""
     columns = _columns_with_entries(measured, writing)
     none = np.empty((len(writing.widths.ratios), 0))
-    widths = np.stack([width for _, width, _ in columns], axis=1) if columns else none
-    widest = np.stack([need for _, _, need in columns], axis=1) if columns else none
+    widths = np.stack([width for _, width, _ in columns]).T if columns else none
+    widest = np.stack([need for _, _, need in columns]).T if columns else none
     return learn_clearance(np.maximum(widths, 1e-6), widest, rng)
 
 

@@ -17,7 +17,7 @@ from layout.quantity import Floats, Quantity, Summary, significant
 SCHEMA = 1
 
 
-@dataclass(frozen=True)
+@dataclass(frozen=True, eq=False)
 class ScaleResult:
     """Millimetres per pixel at the face, at the outline's centroid, and the model that gave it."""
 
@@ -25,7 +25,7 @@ class ScaleResult:
     model: str
 
 
-@dataclass(frozen=True)
+@dataclass(frozen=True, eq=False)
 class Preserved:
     """The surviving fragment: extent along and across the columns, and area, in the outline's plane."""
 
@@ -34,7 +34,7 @@ class Preserved:
     area: Quantity
 
 
-@dataclass(frozen=True)
+@dataclass(frozen=True, eq=False)
 class RulingResult:
     """One ruling: its direction from the vertical or horizontal of the face frame, and its scatter in mm."""
 
@@ -44,7 +44,7 @@ class RulingResult:
     scatter_mm: float | None
 
 
-@dataclass(frozen=True)
+@dataclass(frozen=True, eq=False)
 class ColumnResult:
     """A column between two vertical boundaries; ``taper`` is in mm per 100 mm of height."""
 
@@ -54,7 +54,7 @@ class ColumnResult:
     taper: Quantity
 
 
-@dataclass(frozen=True)
+@dataclass(frozen=True, eq=False)
 class PitchResult:
     """Line pitch at the middle of the traced lines, its growth from line to line, and the lines' numbers."""
 
@@ -64,7 +64,7 @@ class PitchResult:
     index: dict[str, int]
 
 
-@dataclass(frozen=True)
+@dataclass(frozen=True, eq=False)
 class ViewResult:
     """What one view measures."""
 
@@ -76,7 +76,7 @@ class ViewResult:
     line_pitch: PitchResult | None
 
 
-@dataclass(frozen=True)
+@dataclass(frozen=True, eq=False)
 class AxisEvidence:
     """What one source of evidence says alone about the width, and its share of the precision."""
 
@@ -85,7 +85,7 @@ class AxisEvidence:
     share: float
 
 
-@dataclass(frozen=True)
+@dataclass(frozen=True, eq=False)
 class AxisResult:
     """The axis: its x at y = 0 in the face frame (vertical axis), its angle, and the evidence for it."""
 
@@ -94,7 +94,7 @@ class AxisResult:
     evidence: tuple[AxisEvidence, ...]
 
 
-@dataclass(frozen=True)
+@dataclass(frozen=True, eq=False)
 class Axes:
     """The axes of symmetry that could be found."""
 
@@ -111,7 +111,7 @@ class ReconstructedOutline:
     band_px: tuple[Floats, Floats]
 
 
-@dataclass(frozen=True)
+@dataclass(frozen=True, eq=False)
 class Reconstructed:
     """The whole tablet as inferred from one view."""
 
@@ -127,7 +127,7 @@ class Reconstructed:
     margin: Quantity | None
 
 
-@dataclass(frozen=True)
+@dataclass(frozen=True, eq=False)
 class SignWidthResult:
     """Width of a full digit in mm; of the other kinds of sign in full digits; how many entries spoke."""
 
@@ -139,7 +139,7 @@ class SignWidthResult:
     entries: int
 
 
-@dataclass(frozen=True)
+@dataclass(frozen=True, eq=False)
 class ColumnClearance:
     """How much wider one surviving column is than its widest entry."""
 
@@ -147,7 +147,7 @@ class ColumnClearance:
     ratio: Quantity
 
 
-@dataclass(frozen=True)
+@dataclass(frozen=True, eq=False)
 class ClearanceResult:
     """The scribe's clearance: of each surviving column, typical, and its spread (sd of the logarithm)."""
 
@@ -156,7 +156,7 @@ class ClearanceResult:
     spread: Quantity
 
 
-@dataclass(frozen=True)
+@dataclass(frozen=True, eq=False)
 class LinesResult:
     """Height in lines: of the lost part, and of the whole face."""
 
@@ -164,7 +164,7 @@ class LinesResult:
     face: Quantity | None
 
 
-@dataclass(frozen=True)
+@dataclass(frozen=True, eq=False)
 class Capacity:
     """What the lost part held: sign widths across, lines down."""
 
@@ -172,7 +172,7 @@ class Capacity:
     lines: LinesResult
 
 
-@dataclass(frozen=True)
+@dataclass(frozen=True, eq=False)
 class RankingRow:
     """One candidate against the lost space (in the ranking "none of these" is a row too)."""
 
@@ -187,7 +187,7 @@ class RankingRow:
     contradicted_lines: tuple[int, ...]
 
 
-@dataclass(frozen=True)
+@dataclass(frozen=True, eq=False)
 class Results:
     """Everything that one measurement says."""
 

@@ -109,7 +109,7 @@ def fit_lines(
     lines = []
     for (name, runs, points), trace, fit in zip(traces, prepared, fits, strict=True):
         z = rng.standard_normal((2, draws))
-        mean_offset, mean_slope, l00, _, l10, l11 = fit.parameters[:, cell]
+        mean_offset, mean_slope, l00, _, l10, l11 = np.take(fit.parameters, cell, axis=1)
         offset, slope = mean_offset + l00 * z[0], mean_slope + l10 * z[0] + l11 * z[1]
         lines.append(_line(name, runs, points, trace, (offset, slope)))
     return lines
@@ -270,7 +270,7 @@ def _number(y: Floats) -> list[_Numbering]:
     """
     gaps = np.diff(y)
     found: dict[tuple[int, ...], _Numbering] = {}
-    for guess in np.unique(np.concatenate([gaps / steps for steps in range(1, MOST_STEPS + 1)])):
+    for guess in np.concatenate([gaps / steps for steps in range(1, MOST_STEPS + 1)]):
         steps = np.maximum(np.rint(gaps / guess), 1).astype(np.int64)
         if tuple(steps) in found or steps.max() > 12:
             continue

@@ -181,7 +181,7 @@ def fit_sign_widths(
     efficiency = float(weight.sum() ** 2 / (weight**2).sum() / rows)
     notices = _notices(written, prior, efficiency=efficiency)
     return SignWidths(
-        full, np.column_stack((np.ones(rows), proposal.ratios[chosen])), len(written.lengths), notices
+        full, np.vstack((np.ones(rows), proposal.ratios.T[:, chosen])).T, len(written.lengths), notices
     )
 
 
@@ -240,8 +240,8 @@ def _propose(grid: _Grid, rows: int, rng: np.random.Generator) -> _Proposal:
     mass = np.exp(log_mass - log_mass.max())
     node = rng.choice(len(mass), size=rows, p=mass / mass.sum())
     root = np.linalg.cholesky(covariance)
-    normal = rng.standard_normal((rows, mode.shape[1]))
-    ratios = mode[node] + (root[node] @ normal[..., None])[..., 0]
+    normal = rng.standard_normal((mode.shape[1], rows)).T
+    ratios = (mode.T[:, node] + np.einsum("ijn,nj->in", root.transpose(1, 2, 0)[..., node], normal)).T
     log_density = -0.5 * (normal**2).sum(axis=1)
     log_density -= np.log(np.diagonal(root, axis1=1, axis2=2)).sum(axis=1)[node]
     full_log, full_precision, log_evidence = grid.full_given(node, np.maximum(ratios, LEAST_RATIO))

@@ -10,7 +10,7 @@ import numpy as np
 from layout.frame import Frame, Scale, fit_scale, measure_scale, pointing_of
 from layout.lengths import Mapped, measure_column, polygon_area, polygon_centroid
 from layout.notices import Missing, Notice, warn
-from layout.quantity import Floats, Quantity
+from layout.quantity import Floats, Quantity, quantiles
 from layout.record.model import Record, Ruling, View
 from layout.results import ColumnResult, PitchResult, Preserved, RulingResult, ScaleResult, ViewResult
 from layout.rulings import Line, Pitch, fit_lines, fit_pitch
@@ -118,7 +118,7 @@ def find_frame(view: View, scale: Scale) -> Frame:
         for piece in view.outline
         if piece.edge in ("left", "right") and len(piece.points) > 1
     ]
-    turn = float(np.median(turns)) if turns else 0.0
+    turn = float(quantiles(np.array(turns), (0.5,))[0]) if turns else 0.0
     return Frame(scale.centre_px, (centroid - scale.centre_px) * mm_per_px, turn)
 
 

@@ -193,8 +193,9 @@ def test_mirroring_the_fragment_mirrors_the_result() -> None:
 def test_the_direction_of_tracing_does_not_matter() -> None:
     what = traced(np.random.default_rng(5))
     back = Traced(tuple((name, points[::-1]) for name, points in what.pieces), what.breaks, what.pointing_mm)
-    one, other = (np.median(np.exp(fit(piece).log_width)) for piece in (what, back))
-    assert one == pytest.approx(other, rel=1e-6)
+    one, other = (np.exp(fit(piece).log_width) for piece in (what, back))
+    # the same random numbers meet the same posterior: far closer than other random numbers would come
+    assert np.median(one) == pytest.approx(np.median(other), abs=0.002 * one.std())
 
 
 def test_a_break_that_reaches_further_makes_the_tablet_wider() -> None:

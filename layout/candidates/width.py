@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from dataclasses import dataclass
+from functools import cached_property
 
 import numpy as np
 
@@ -30,7 +31,7 @@ class CandidateWidth:
     by_column
         What each column's widest entry needs, in full digits, shape (N, columns).
     widest_line
-        Each column's widest line, counted from 1: the one with the greatest median width.
+        Each column's widest line, counted from 1: the one with the greatest mean width.
     plain_count
         The widest entries by the convention, added up: a digit without tens is half, any other one.
     """
@@ -39,7 +40,7 @@ class CandidateWidth:
     widest_line: tuple[int, ...]
     plain_count: float
 
-    @property
+    @cached_property
     def required(self) -> Floats:
         """What all columns need together, in full digits, shape (N,)."""
         return np.asarray(self.by_column.sum(axis=1))
@@ -78,7 +79,7 @@ def measure_candidate(proposal: Proposal, widths: SignWidths) -> CandidateWidth:
         message = "needs a column with signs, has empty entries only"
         raise CallError(message)
     return CandidateWidth(
-        np.column_stack([find_widest(column, widths) for column in columns]),
+        np.stack([find_widest(column, widths) for column in columns]).T,
         tuple(_find_widest_line(column, widths) for column in columns),
         sum(max(entry.plain for entry in column) for column in columns),
     )

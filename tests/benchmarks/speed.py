@@ -6,6 +6,7 @@ python -m tests.benchmarks.speed [RECORD] [--runs N]
 from __future__ import annotations
 
 import argparse
+import os
 import statistics
 import subprocess
 import sys
@@ -42,7 +43,10 @@ def main() -> None:
     wanted = parser.parse_args()
 
     def process(*arguments: str) -> Callable[[], object]:
-        return lambda: subprocess.run([sys.executable, *arguments], check=True, stdout=subprocess.DEVNULL)
+        # as installed: with compiled modules, which the first run writes
+        environment = {k: v for k, v in os.environ.items() if k != "PYTHONDONTWRITEBYTECODE"}
+        call = [sys.executable, *arguments]
+        return lambda: subprocess.run(call, check=True, stdout=subprocess.DEVNULL, env=environment)
 
     whole = process("-m", "layout", "measure", str(wanted.record), "--json")
     ours, imports = alternating(whole, process("-c", IMPORTS), wanted.runs)
