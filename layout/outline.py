@@ -29,30 +29,39 @@ from layout.notices import Caveat, warn
 from layout.quantity import Floats, quantiles
 
 STATIONS = 60
-FIRST_RUNGS, RUNGS = 18, 22
-STEPS, WARM_STEPS = 8, 3
+"""Of one piece of edge, at most."""
+
 LENGTHS_MM = np.array([3.5, 7.0, 14.0, 5.0, 12.0])
 ROUGH = (False, False, False, True, True)
-LENGTH_PRIOR = (np.log(8.0), 0.5)
+"""Kernels of the wobble: correlation lengths; Matern 3/2 where rough, else 5/2."""
 SIZES_MM = np.geomspace(0.08, 1.6, 9)
-SIZE_PRIOR = (np.log(0.35), 0.5)
+LENGTH_PRIOR, SIZE_PRIOR = (np.log(8.0), 0.5), (np.log(0.35), 0.5)
 TYPICAL = np.array([len(SIZES_MM) + 4])
 """The place of 7 mm and 0.36 mm among all wobbles."""
-APART, ROUGH_MM = 3, 0.4
-NEGLIGIBLE = 9.0
+MISFIT_MM, MISFIT_LENGTH_MM = 0.05, 25.0
+"""Size and correlation length of what the family itself cannot follow."""
+
 ROUNDNESS_PRIOR = (np.log(3.5), 0.5)
-MISFIT_MM, MISFIT_LENGTH_MM = 0.07, 25.0
-BULGE_PRIOR = (0.02, 0.018)
+BULGE_PRIOR = (0.02, 0.015)
 PROPORTION_SD = 0.4
 TURN_SD = np.deg2rad(2.5)
 PLACE_SD_MM = 500.0
-WIDEST = 6.0
-"""How many times the surviving width the ladder reaches."""
-CLEAR_MM = 5.0
-NO_MM = 1e-7
+"""Priors: log n, bulges, log of height over width, turn, centre. Common practice, no source: wide on purpose."""
+
+FIRST_RUNGS, RUNGS, WIDEST = 18, 22, 6.0
+"""Rungs of both ladders, and how many times the surviving width the first one reaches."""
+STEPS, WARM_STEPS = 8, 3
+APART, ROUGH_MM = 3, 0.4
+"""The first fit is rough: every third station, as if independent with this standard deviation."""
+NEGLIGIBLE = 9.0
+"""Wobbles and widths whose log evidence is lower by this are left out."""
 CHECKED = 200
 ENOUGH, TOO_FEW = 0.5, 0.1
+"""Rows checked against the exact posterior, and what their effective share must be."""
+CLEAR_MM = 5.0
 IMPOSSIBLE, SURE = 1e-3, 0.9999
+NO_MM, LOG_N = 1e-7, (-1.0, 5.0)
+"""What is evaluated: places no nearer to an axis, exponents no further away."""
 
 X0, Y0, TURN, HEIGHT, UPPER, LOWER, SIDES, ENDS, BULGE_ENDS, BULGE_SIDES = range(10)
 SHAPES = 10
@@ -248,7 +257,8 @@ class _Implicit:
     def at(cls, x: Floats, y: Floats, log_width: Floats, shape: Floats) -> _Implicit:
         """Evaluate F and what its derivatives are made of."""
         left, right, upper, lower = (half[:, None] for half in _halves(log_width, shape))
-        n = np.where(y < 0, np.exp(shape[:, UPPER, None]), np.exp(shape[:, LOWER, None]))
+        above, below = np.exp(np.clip(shape[:, [UPPER, LOWER], None], *LOG_N)).transpose(1, 0, 2)
+        n = np.where(y < 0, above, below)
         x_abs, y_abs = np.maximum(np.abs(x), NO_MM), np.maximum(np.abs(y), NO_MM)
         u, v = x_abs / np.where(x < 0, left, right), y_abs / np.where(y < 0, upper, lower)
         # far outside the ladder's first guesses may lie; there the bulges stop to matter
@@ -256,16 +266,18 @@ class _Implicit:
         end, side = shape[:, BULGE_ENDS, None], shape[:, BULGE_SIDES, None]
         in_u, in_v = np.maximum(1 - side * v2, 0.3), np.maximum(1 - end * u2, 0.3)
         log_u, log_v = np.log(u / in_u), np.log(v / in_v)
-        power_u, power_v = np.exp(n * log_u), np.exp(n * log_v)
+        # the larger is taken out, so that no power overflows
+        log_max = np.maximum(log_u, log_v)
+        power_u, power_v = np.exp(n * (log_u - log_max)), np.exp(n * (log_v - log_max))
         total = power_u + power_v
-        log_total = np.log(total)
-        radius = np.exp(log_total / n)
+        log_radius = log_max + np.log(total) / n
+        radius = np.exp(log_radius)
         by_u, by_v = radius * power_u / total, radius * power_v / total
         by_side, by_end = v2 / in_u, u2 / in_v
         fx = np.copysign((by_u + 2 * by_v * end * by_end) / x_abs, x)
         fy = np.copysign((by_v + 2 * by_u * side * by_side) / y_abs, y)
         steep = np.sqrt(fx * fx + fy * fy)
-        by_n = by_u * log_u + by_v * log_v - radius * log_total / n
+        by_n = by_u * log_u + by_v * log_v - radius * log_radius
         return cls(x, y, fx, fy, steep, (radius - 1) / steep, by_u, by_v, by_n, by_side, by_end)
 
     def slopes(self, shape: Floats) -> Floats:
@@ -461,22 +473,7 @@ def fit_outline(
         The outline, or None where the posterior could not be drawn from (``outline.unsure`` then says so),
         and warnings.
     """
-    points, noise = _average(traced)
-    start, prior = _begin(traced, asymmetry)
-    seen = float(np.ptp(np.vstack([points, traced.breaks]), axis=0)[0])
-    log_width = np.linspace(np.log(0.97 * seen), np.log(WIDEST * seen), FIRST_RUNGS)
-    apart = points[::APART]
-    shape = _climb(apart, np.eye(len(apart)) / ROUGH_MM, prior, log_width, start(log_width), STEPS)
-    misfit = ((distances(apart, log_width, shape) / ROUGH_MM) ** 2).sum(axis=1)
-    best = [int((misfit + prior.misfit(log_width, shape)).argmin())]
-    stations = _Stations.along(points, noise, feet(points, log_width[best], shape[best]))
-    wobbles = Wobbles.every()
-    shape = _climb(points, _root(stations, wobbles.at(TYPICAL)), prior, log_width, shape, WARM_STEPS)
-    ladder = _weigh(stations, prior, log_width, shape, wobbles)
-    log_width, wobbles = _relaid(ladder), ladder.probable
-    shape = np.stack([np.interp(log_width, ladder.log_width, column) for column in shape.T], axis=-1)
-    shape = _climb(points, _root(stations, wobbles), prior, log_width, shape, WARM_STEPS)
-    ladder = _weigh(stations, prior, log_width, shape, wobbles)
+    stations, prior, ladder = _fit(traced, asymmetry)
     outline, log_proposal = _draw(ladder, draws, rng)
     rows = rng.permutation(draws)[:CHECKED]
     log_weights = _log_exact(outline, stations, prior, rows) - log_proposal[rows]
@@ -493,6 +490,26 @@ def fit_outline(
     if holds.max() < IMPOSSIBLE or _effective_share(np.log(np.maximum(weights, 1e-300))) < TOO_FEW**2:
         return None, [*caveats, warn("outline.break_outside")]
     return _resampled(outline, weights, rng), caveats
+
+
+def _fit(traced: Traced, asymmetry: float) -> tuple[_Stations, _Prior, _Ladder]:
+    """Fit the shape on a first ladder, roughly and then with its wobble, and on a second one laid over the mass."""
+    points, noise = _average(traced)
+    start, prior = _begin(traced, asymmetry)
+    seen = float(np.ptp(np.vstack([points, traced.breaks]), axis=0)[0])
+    log_width = np.linspace(np.log(0.97 * seen), np.log(WIDEST * seen), FIRST_RUNGS)
+    apart = points[::APART]
+    shape = _climb(apart, np.eye(len(apart)) / ROUGH_MM, prior, log_width, start(log_width), STEPS)
+    misfit = ((distances(apart, log_width, shape) / ROUGH_MM) ** 2).sum(axis=1)
+    best = [int((misfit + prior.misfit(log_width, shape)).argmin())]
+    stations = _Stations.along(points, noise, feet(points, log_width[best], shape[best]))
+    wobbles = Wobbles.every()
+    shape = _climb(points, _root(stations, wobbles.at(TYPICAL)), prior, log_width, shape, WARM_STEPS)
+    ladder = _weigh(stations, prior, log_width, shape, wobbles)
+    log_width, wobbles = _relaid(ladder), ladder.probable
+    shape = np.stack([np.interp(log_width, ladder.log_width, column) for column in shape.T], axis=-1)
+    shape = _climb(points, _root(stations, wobbles), prior, log_width, shape, WARM_STEPS)
+    return stations, prior, _weigh(stations, prior, log_width, shape, wobbles)
 
 
 def _begin(traced: Traced, asymmetry: float) -> tuple[_Start, _Prior]:
@@ -588,7 +605,7 @@ def _relaid(ladder: _Ladder) -> Floats:
     """Lay the rungs anew over the mass of the first ladder, one rung beyond it on each side."""
     fine = np.linspace(ladder.log_width[0], ladder.log_width[-1], 2000)
     log_p = np.interp(fine, ladder.log_width, ladder.log_marginal)
-    inside = np.flatnonzero(log_p > log_p.max() - 9.0)
+    inside = np.flatnonzero(log_p > log_p.max() - NEGLIGIBLE)
     rung = ladder.log_width[1] - ladder.log_width[0]
     return np.linspace(fine[inside[0]] - 0.15 * rung, fine[inside[-1]] + 0.15 * rung, RUNGS)
 
