@@ -6,6 +6,7 @@ exists to report; 2: the input or the call is wrong, which is said in one line f
 
 from __future__ import annotations
 
+import gc
 import json
 import os
 from pathlib import Path
@@ -48,6 +49,8 @@ AsJson = Annotated[bool, typer.Option("--json", help="print JSON, for programs")
 def main(arguments: list[str] | None = None) -> int:
     """Run the command and return its exit code; what is wrong is said in one line for each fault."""
     speak_utf8()
+    # modules being loaded are no garbage: looking for some among them all the time takes a twentieth of a short run
+    gc.set_threshold(100_000)
     # looking for plugins of pydantic among all installed packages takes longer than reading a record
     os.environ.setdefault("PYDANTIC_DISABLE_PLUGINS", "__all__")
     try:

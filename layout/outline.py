@@ -8,8 +8,7 @@ with a of its own left and right, b above and below (hand-made halves differ), n
 (rounded differently), and the bulges s of the sides and e of the ends: how much of a half extent a straight run
 falls back towards its corner. X, Y are turned by a small angle. The clay's edge and the hand that traced it wobble
 about it: the normal distances of the traced points are a Gaussian process with a Matern 5/2 or 3/2 correlation
-(Rasmussen and Williams 2006, eq. 4.17), a slow and small one for outlines that are not quite of this family, and
-independent errors of pointing. The break is no evidence of shape.
+(Rasmussen and Williams 2006, eq. 4.17) plus independent errors of pointing. The break is no evidence of shape.
 
 The posterior needs no sampler. On a ladder of widths all other shape parameters are fitted together
 (Gauss-Newton, all rungs at once); about each rung the residuals are linear, so that for every length and size
@@ -38,8 +37,6 @@ SIZES_MM = np.geomspace(0.08, 1.6, 9)
 LENGTH_PRIOR, SIZE_PRIOR = (np.log(8.0), 0.5), (np.log(0.35), 0.5)
 TYPICAL = np.array([len(SIZES_MM) + 4])
 """The place of 7 mm and 0.36 mm among all wobbles."""
-MISFIT_MM, MISFIT_LENGTH_MM = 0.05, 25.0
-"""Size and correlation length of what the family itself cannot follow."""
 
 ROUNDNESS_PRIOR = (np.log(3.5), 0.5)
 BULGE_PRIOR = (0.02, 0.015)
@@ -324,10 +321,8 @@ class _Stations:
         a little more distance would explain it away.
         """
         apart = np.hypot(*(smooth[:, None] - smooth[None]).transpose(2, 0, 1))
-        fixed = np.diag(noise**2) + MISFIT_MM**2 * matern52(apart / MISFIT_LENGTH_MM)
-        inner = np.linalg.inv(np.linalg.cholesky(fixed))
-        values, bases = np.linalg.eigh(inner @ _correlations(apart) @ inner.T)
-        return cls(points, bases.transpose(0, 2, 1) @ inner, np.maximum(values, 0.0))
+        values, bases = np.linalg.eigh(_correlations(apart) / np.outer(noise, noise))
+        return cls(points, bases.transpose(0, 2, 1) / noise, np.maximum(values, 0.0))
 
     def variances(self, wobbles: Wobbles) -> Floats:
         """Return the variances of the whitened residuals under some wobbles, (C, M)."""

@@ -13,15 +13,14 @@ stretch has median one: half of the entries are longer than ``full`` says.
 
 from __future__ import annotations
 
-from collections.abc import Sequence
 from dataclasses import dataclass
+from functools import cached_property
 
 import numpy as np
 from numpy.typing import NDArray
 
 from layout.notices import Notice, assume, warn
 from layout.quantity import Floats
-from layout.signs import SignCounts
 
 Ints = NDArray[np.intp]
 
@@ -128,11 +127,10 @@ class SignWidths:
     entries: int
     notices: tuple[Notice, ...]
 
-    def need(self, counts: Sequence[SignCounts] | Floats) -> Floats:
-        """Return what entries need by their signs, in full digits: shape (N, entries)."""
-        each = np.asarray(counts, dtype=np.float64).reshape(-1, len(SignCounts._fields))
-        need: Floats = np.matmul(self.ratios, each.T)
-        return need
+    @cached_property
+    def mean_ratios(self) -> Floats:
+        """Mean widths of all kinds in full digits, shape (5,)."""
+        return np.asarray(self.ratios.mean(axis=0))
 
 
 def fit_sign_widths(

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import re
+from functools import lru_cache
 from typing import NamedTuple
 
 import numpy as np
@@ -36,6 +37,7 @@ class SignCounts(NamedTuple):
         return float(np.dot(self, PLAIN_COUNTS))
 
 
+@lru_cache(maxsize=4096)  # the same entries come again with every measurement and candidate
 def count_signs(text: str) -> SignCounts:
     """Count the signs of an entry by kind.
 

@@ -102,7 +102,7 @@ def _count_column(index: int, texts: tuple[str, ...]) -> list[SignCounts]:
 
 def _find_widest_line(column: list[SignCounts], widths: SignWidths) -> int:
     """Return the line of the greatest mean width, the first of equals; lines count from 1."""
-    return 1 + int(np.argmax(np.array(column) @ widths.ratios.mean(axis=0)))
+    return 1 + int(np.argmax(np.array(column) @ widths.mean_ratios))
 
 
 @dataclass(frozen=True, eq=False)
