@@ -136,12 +136,15 @@ def concise(value: float, sd: float) -> str:
     '98800(4300)'
     >>> concise(3.0, 0.0)
     '3'
+    >>> concise(-0.001, 0.19)
+    '0.00(19)'
     """
     if sd == 0 or not math.isfinite(sd):
         return f"{value:g}"
     places = decimals_of(sd)
+    value = round(value, places) + 0.0  # what rounds to zero does not keep its minus sign
     if places <= 0:
-        return f"{round(value, places):.0f}({round(sd, places):.0f})"
+        return f"{value:.0f}({round(sd, places):.0f})"
     digits = f"{sd * 10**places:.0f}"
     # 1.0 mm and more: the decimal point stays in the bracket, so that 12.3(1.4) cannot be misread
     bracket = digits if sd < 1 else f"{sd:.{places}f}"

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from layout.quantity import SIGNIFICANT, Summary, concise, decimals_of
+from layout.quantity import Summary, concise, decimals_of
 
 UNITS = {"1": "", "mm2": "cm²", "deg": "°", "mm_per_100mm": "mm per 100 mm"}
 MM2_PER_CM2 = 100.0
@@ -33,9 +33,7 @@ def number(summary: Summary) -> str:
     if summary.value is None:
         return _bound(summary)
     if summary.sd is not None:
-        # rounded first, so that what rounds to zero does not keep its minus sign
-        places = decimals_of(summary.sd) if summary.sd else SIGNIFICANT
-        return concise(round(summary.value, places) + 0.0, summary.sd)
+        return concise(summary.value, summary.sd)
     return _share(summary.value) if summary.unit == "1" else f"{summary.value:g}"
 
 
