@@ -26,7 +26,6 @@ from layout.results import (
     ColumnClearance,
     LinesResult,
     RankingRow,
-    Reconstructed,
     Results,
     SignWidthResult,
 )
@@ -257,15 +256,15 @@ def _capacity(measured: MeasuredView, whole: Whole | None, widths: SignWidths) -
     across = None
     if whole.lost_space is not None and widths.full is not None:
         across = Quantity("sign widths", whole.lost_space / widths.full)
-    return Capacity(across, _lines(measured, whole.reconstructed))
+    return Capacity(across, _lines(measured, whole))
 
 
-def _lines(measured: MeasuredView, whole: Reconstructed) -> LinesResult:
+def _lines(measured: MeasuredView, whole: Whole) -> LinesResult:
     """Return the whole height and the lost height in lines of this pitch."""
-    if measured.pitch_mm is None or whole.height is None or measured.preserved is None:
+    height = whole.reconstructed.height
+    if measured.pitch_mm is None or height is None or whole.lost_height is None:
         return LinesResult(None, None)
-    lost = whole.height.draws - measured.preserved.height.draws
     return LinesResult(
-        lost=Quantity("lines", lost / measured.pitch_mm),
-        face=Quantity("lines", whole.height.draws / measured.pitch_mm),
+        lost=Quantity("lines", whole.lost_height / measured.pitch_mm),
+        face=Quantity("lines", height.draws / measured.pitch_mm),
     )

@@ -28,12 +28,12 @@ OPPOSITE = {"left": "right", "right": "left"}
 
 @dataclass(frozen=True, eq=False)
 class Whole:
-    """The reconstructed tablet: ``lost_space`` is in mm, or in the scale's own unit where there is none."""
+    """The reconstructed tablet: lengths, (N,), are in mm, or in the scale's own unit where there is none."""
 
     width: Floats
     lost_space: Floats | None
+    lost_height: Floats | None
     reconstructed: Reconstructed
-    notices: tuple[Notice, ...]
 
 
 def reconstruct(
@@ -87,7 +87,8 @@ def reconstruct(
         lost_space_by_side={side: Quantity("mm", space) for side, space in by_side.items()},
         margin=None if margin is None else Quantity("mm", margin),
     )
-    return Whole(extent.width, lost, reconstructed, tuple(notices)), notices
+    lost_height = _lost_height(outline, traced, measured.mapped) if bounded else None
+    return Whole(extent.width, lost, lost_height, reconstructed), notices
 
 
 def _trace(measured: MeasuredView) -> tuple[Traced, list[Notice]]:
@@ -166,6 +167,25 @@ def _drawn(outline: Outline, measured: MeasuredView) -> ReconstructedOutline:
         points_px=measured.frame.to_px(median, mm_per_px),
         band_px=(measured.frame.to_px(inner, mm_per_px), measured.frame.to_px(outer, mm_per_px)),
     )
+
+
+def _lost_height(outline: Outline, traced: Traced, mapped: Mapped) -> Floats:
+    """Return the height that is gone above and below together, (N,).
+
+    Where the edge still stands at the tablet's highest or lowest point, nothing is lost there, however much it wobbles.
+    """
+    tangents = outline.tangents()
+    everything = np.vstack([traced.breaks, *(points for _, points in traced.pieces)])
+    lost = np.zeros(len(tangents))
+    for side, place, down in (("upper", 2, -1), ("lower", 3, 1)):
+        x, y = tangents[:, place].T
+        stands = np.zeros(len(x), dtype=bool)
+        for name, points in traced.pieces:
+            if name == side:
+                stands |= (points[:, 0].min() <= x) & (x <= points[:, 0].max())
+        beyond = down * y - (down * everything[:, 1]).max()
+        lost += np.where(stands, 0.0, np.maximum(beyond, 0.0))
+    return lost * _ratio_at_centre(outline, mapped)
 
 
 def _ratio_at_centre(outline: Outline, mapped: Mapped) -> Floats:

@@ -167,6 +167,21 @@ def test_a_record_is_measured_as_far_as_it_goes() -> None:
     assert results.ranking[0].weight is not None
 
 
+def test_no_height_is_lost_where_the_edges_stand() -> None:
+    record = simulated()
+    lines = measured(record).capacity.lines  # type: ignore[union-attr]
+    assert lines.lost is not None
+    assert (lines.lost.draws == 0).all()
+    # the middle of the upper edge breaks away: only its end near the corner still stands
+    view = record["views"][0]
+    upper = next(piece for piece in view["outline"] if piece["edge"] == "upper")
+    upper["points"] = sorted(upper["points"])[-8:]
+    lost = measured(record).capacity.lines.lost  # type: ignore[union-attr]
+    assert lost is not None
+    assert 0 <= np.percentile(lost.draws, 2.5) < np.percentile(lost.draws, 97.5) < 3
+    assert np.median(lost.draws) > 0.1
+
+
 def test_every_part_of_a_record_goes_through() -> None:
     results = measured(small_record(), 500)
     assert results.views[0].scale is not None

@@ -74,19 +74,30 @@ def method(results: Results) -> tuple[str, ...]:
             "draws, so what depends on one scale or one ruling stays correlated.",
         ),
         (
+            any(view.scale for view in results.views),
+            "The scale is fitted to every bar and known length at once. Its uncertainty holds the height of the bar "
+            "below the face, the distance of the lens, and how far the camera may be from square; the outline lies "
+            "half the tablet's thickness further from the lens than the face.",
+        ),
+        (
             any(view.rulings for view in results.views),
-            "A ruling is a straight line fitted by orthogonal least squares; the scatter seen about it, and "
-            "not the pointing error alone, gives its uncertainty.",
+            "A ruling is a straight line fitted by least squares. It wobbles about that line as a scribe's hand "
+            "does; size and length of the wobble are learned from all rulings of the face together, and give its "
+            "uncertainty with the pointing error.",
         ),
         (
             any(view.line_pitch for view in results.views),
-            "The line pitch is a regression of the rulings' positions on their line numbers.",
+            "The line pitch is a regression of the rulings' positions on their line numbers, which are inferred "
+            "where rulings are missing.",
         ),
         (
             whole,
-            "The surviving original edges are fitted with a superellipse about an unknown axis. A hand-made "
-            "edge wobbles: its departures are taken as correlated along the edge, with a Matérn covariance "
-            "of smoothness 5/2. The break's course is no evidence of the shape.",
+            "The surviving original edges are fitted with a smooth outline about an unknown axis: a superellipse, "
+            "rounded differently above and below, whose sides and ends may bulge. A hand-made edge wobbles: its "
+            "departures are taken as correlated along the edge, with a Matérn covariance of smoothness 5/2 or 3/2 "
+            "whose size and length are learned from the edge. Width and height lie between the tangents of the "
+            "smooth outline; the wobble is not part of them, so that the surviving extent may be a little more. "
+            "The break's course is no evidence of the shape, but lies inside.",
         ),
         (
             results.clearance is not None,
