@@ -101,6 +101,11 @@ class Outline:
         """Left, right, upper and lower half extent in mm, each of shape (N,)."""
         return _halves(self.log_width, self.shape)
 
+    @property
+    def wobble_mm(self) -> Floats:
+        """Standard deviation of the edge's wobble, shape (N,)."""
+        return np.asarray(SIZES_MM[self.wobbles.size])
+
     def tangents(self) -> Floats:
         """Return where the outline touches its left, right, upper and lower tangent, shape (N, 4, 2)."""
         left, right, upper, lower = self.halves
@@ -126,7 +131,8 @@ class Outline:
     def polygon(self, quantile: float, points: int = 240) -> Floats:
         """Return the outline whose width stands at a quantile, as a closed polygon (points, 2) in mm.
 
-        It is the mean shape of the rows about that quantile of the width.
+        It is the mean shape of the rows about that quantile of the width. It begins at the right and goes over the
+        lower end; a quarter and three quarters round it meets the vertical axis.
         """
         order = np.argsort(self.log_width)
         middle = int(quantile * (len(order) - 1))
@@ -679,7 +685,7 @@ def _inside(breaks: Floats, outline: Outline, rows: NDArray[np.intp]) -> Floats:
     """Return how probable it is that the break lies inside the outline in some rows."""
     away = distances(breaks, outline.log_width[rows], outline.shape[rows])
     # the logistic form of the normal distribution (Bowling et al. 2009) is near enough for a soft wall
-    z = -away.max(axis=1) / SIZES_MM[outline.wobbles.size[rows]]
+    z = -away.max(axis=1) / outline.wobble_mm[rows]
     return np.asarray(1 / (1 + np.exp(-np.clip(1.702 * z, -40, 40))))
 
 

@@ -172,7 +172,8 @@ def _drawn(outline: Outline, measured: MeasuredView) -> ReconstructedOutline:
 def _lost_height(outline: Outline, traced: Traced, mapped: Mapped) -> Floats:
     """Return the height that is gone above and below together, (N,).
 
-    Where the edge still stands at the tablet's highest or lowest point, nothing is lost there, however much it wobbles.
+    Where the edge still stands at the tablet's highest or lowest point nothing is lost there, nor is what would be less
+    than the edge's wobble.
     """
     tangents = outline.tangents()
     everything = np.vstack([traced.breaks, *(points for _, points in traced.pieces)])
@@ -184,7 +185,7 @@ def _lost_height(outline: Outline, traced: Traced, mapped: Mapped) -> Floats:
             if name == side:
                 stands |= (points[:, 0].min() <= x) & (x <= points[:, 0].max())
         beyond = down * y - (down * everything[:, 1]).max()
-        lost += np.where(stands, 0.0, np.maximum(beyond, 0.0))
+        lost += np.where(stands | (beyond < outline.wobble_mm), 0.0, beyond)
     return lost * _ratio_at_centre(outline, mapped)
 
 

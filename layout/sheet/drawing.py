@@ -52,7 +52,7 @@ class Drawing:
     """The drawing: paths in pixels of the photograph with the id ``photograph``.
 
     ``stroke_px`` is what a thin line measures in them, ``width_mm`` the drawing's width. ``surviving`` is
-    empty while the outline is open, ``whole`` and ``band`` while nothing is inferred.
+    empty while the outline is open, ``whole``, ``band`` and ``axis`` while nothing is inferred.
     """
 
     photograph: str
@@ -62,6 +62,7 @@ class Drawing:
     surviving: str
     whole: str
     band: str
+    axis: str
     edges: tuple[Stroke, ...]
     rulings: tuple[Stroke, ...]
     bar: ScaleBar | None
@@ -89,12 +90,19 @@ def draw(record: Record, results: Results) -> Drawing | None:
         surviving=_path(contour, closed=True) if measured.preserved is not None else "",
         whole="" if outline is None else _path(outline.points_px, closed=True),
         band="" if outline is None else " ".join(_path(edge, closed=True) for edge in outline.band_px),
+        axis="" if outline is None else _axis(outline),
         edges=_edges(view),
         rulings=tuple(
             Stroke(ruling.kind, _path(ruling.points)) for ruling in view.rulings if len(ruling.points) > 1
         ),
         bar=bar,
     )
+
+
+def _axis(outline: ReconstructedOutline) -> str:
+    """Return the vertical axis from end to end of the whole outline, where its polygon meets it."""
+    quarter = len(outline.points_px) // 4
+    return _path(outline.points_px[[quarter, 3 * quarter]])
 
 
 def _drawn_view(record: Record, results: Results) -> int | None:
