@@ -405,8 +405,12 @@ class _Prior:
         return mean
 
     def misfit(self, log_width: Floats, shape: Floats) -> Floats:
-        """Return the sum of squares of the parameters' distances from their means, in their sd, (G,)."""
-        return np.asarray((((shape - self.mean(log_width)) / self.sd) ** 2).sum(axis=1))
+        """Return minus twice the log density, up to a constant, (G,).
+
+        Any share of the width is as likely to be lost as any other: of a width w of which s survives, s / w is even,
+        which makes the density of log w fall with 1 / w.
+        """
+        return np.asarray((((shape - self.mean(log_width)) / self.sd) ** 2).sum(axis=1) + 2 * log_width)
 
     @property
     def sd(self) -> Floats:
