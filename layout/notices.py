@@ -11,7 +11,7 @@ from dataclasses import dataclass
 ASSUMPTIONS: dict[str, str] = {
     "outline.asymmetry": "halves made by hand are taken to differ by {percent:g} % (standard uncertainty)",
     "outline.shape": "the outline is taken to be smooth, rounded alike left and right, about as wide as high (give or "
-    "take half), its sides and ends to bulge by about 2 % of half its width or height (give or take 1.5), and "
+    "take half), its sides and ends to bulge by about 2 % of half its width or height (give or take 2), and "
     "its edge to wobble by about 0.35 mm over 8 mm (each give or take half)",
     "lost.sides": "which side is lost was not given: {sides}, where no original edge is traced",
     "margin.mirrored": "the margin on the lost side is taken to be as wide as the one that survives",

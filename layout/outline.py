@@ -39,7 +39,7 @@ TYPICAL = np.array([len(SIZES_MM) + 4])
 """The place of 7 mm and 0.36 mm among all wobbles."""
 
 ROUNDNESS_PRIOR = (np.log(3.5), 0.5)
-BULGE_PRIOR = (0.02, 0.015)
+BULGE_PRIOR = (0.02, 0.018)
 PROPORTION_SD = 0.4
 TURN_SD = np.deg2rad(2.5)
 PLACE_SD_MM = 500.0
@@ -53,8 +53,8 @@ APART, ROUGH_MM = 3, 0.4
 NEGLIGIBLE = 9.0
 """Wobbles and widths whose log evidence is lower by this are left out."""
 CHECKED = 200
-ENOUGH, TOO_FEW = 0.5, 0.1
-"""Rows checked against the exact posterior, and what their effective share must be."""
+ENOUGH, TOO_FEW, TAIL_DOF = 0.5, 0.1, 6.0
+"""Rows checked against the exact posterior, what their effective share must be, tails where all are weighted."""
 CLEAR_MM = 5.0
 IMPOSSIBLE, SURE = 1e-3, 0.9999
 NO_MM, LOG_N = 1e-7, (-1.0, 5.0)
@@ -482,12 +482,13 @@ def fit_outline(
     outline, log_proposal = _draw(ladder, draws, rng)
     rows = rng.permutation(draws)[:CHECKED]
     log_weights = _log_exact(outline, stations, prior, rows) - log_proposal[rows]
-    effective = _effective_share(log_weights)
-    if effective < TOO_FEW:
-        return None, [warn("outline.unsure", percent=round(100 * effective))]
     weights, caveats = np.ones(draws), []
-    if effective < ENOUGH:
+    if _effective_share(log_weights) < ENOUGH:
+        outline, log_proposal = _draw(ladder, draws, rng, heavy=True)
         log_weights = _log_exact(outline, stations, prior, np.arange(draws)) - log_proposal
+        effective = _effective_share(log_weights)
+        if effective < TOO_FEW:
+            return None, [warn("outline.unsure", percent=round(100 * effective))]
         weights = np.exp(log_weights - log_weights.max())
         caveats.append(warn("outline.reweighted", percent=round(100 * effective)))
     holds = _holds(outline, _inner(traced.breaks, stations.points))
@@ -615,8 +616,13 @@ def _relaid(ladder: _Ladder) -> Floats:
     return np.linspace(fine[inside[0]] - 0.15 * rung, fine[inside[-1]] + 0.15 * rung, RUNGS)
 
 
-def _draw(ladder: _Ladder, draws: int, rng: np.random.Generator) -> tuple[Outline, Floats]:
-    """Draw widths, wobbles and shapes; return them with the log density that they were drawn from."""
+def _draw(
+    ladder: _Ladder, draws: int, rng: np.random.Generator, *, heavy: bool = False
+) -> tuple[Outline, Floats]:
+    """Draw widths, wobbles and shapes; return them with the log density that they were drawn from.
+
+    With ``heavy`` tails the shapes follow a multivariate t distribution, as draws that are to be weighted should.
+    """
     fine = np.linspace(ladder.log_width[0], ladder.log_width[-1], 1401)
     log_p = np.interp(fine, ladder.log_width, ladder.log_marginal)
     density = np.exp(log_p - log_p.max())
@@ -632,10 +638,14 @@ def _draw(ladder: _Ladder, draws: int, rng: np.random.Generator) -> tuple[Outlin
     half_log_det = np.log(np.diagonal(lower, axis1=-2, axis2=-1)).sum(axis=-1)
     drift = np.gradient(ladder.mean, ladder.log_width, axis=1)
     z = rng.standard_normal((draws, SHAPES))
+    if heavy:
+        z /= np.sqrt(rng.chisquare(TAIL_DOF, draws) / TAIL_DOF)[:, None]
+    squared = np.einsum("ni,ni->n", z, z)
+    log_shape = -0.5 * (TAIL_DOF + SHAPES) * np.log1p(squared / TAIL_DOF) if heavy else -0.5 * squared
     mean = ladder.mean[cell, rung] + drift[cell, rung] * (log_width - ladder.log_width[rung])[:, None]
     shape = mean + (root[cell, rung] @ z[..., None])[..., 0]
     log_proposal = np.interp(log_width, fine, log_p) + np.log(np.maximum(share[cell, rung], 1e-300))
-    log_proposal += half_log_det[cell, rung] - 0.5 * np.einsum("ni,ni->n", z, z)
+    log_proposal += half_log_det[cell, rung] + log_shape
     return Outline(log_width, shape, ladder.wobbles.at(cell)), log_proposal
 
 

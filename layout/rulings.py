@@ -19,8 +19,8 @@ SIZES_MM = np.geomspace(0.015, 1.0, 12)
 SIZE_PRIOR = (np.log(0.12), 0.8)
 LENGTHS_MM = np.array([1.0, 3.0, 8.0, 20.0])
 
-SCATTER_DOF, SCATTER_MM = 3.0, 0.2
-"""Prior of the scatter of lines about their regular spacing: worth three lines, about 0.2 mm."""
+SCATTER_DOF, SCATTER_MM = 3.0, 0.17
+"""Prior of the scatter of lines about their regular spacing: worth three lines, about 0.17 mm."""
 SKIP = 0.25
 """How probable it is that the next line's ruling was not traced."""
 DRIFT_SD_MM = 0.1

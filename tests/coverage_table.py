@@ -82,6 +82,11 @@ def efficiency(judged: list[Judged]) -> str:
     )
 
 
+def counted(names: Counter[str]) -> str:
+    """Write how often each name stands, the most frequent first."""
+    return ", ".join(f"{name} {times}" for name, times in names.most_common()) or "none"
+
+
 def table(judged: list[Judged]) -> str:
     """Write the whole report."""
     by_share = {
@@ -96,15 +101,9 @@ def table(judged: list[Judged]) -> str:
         lines += rows(quantity, by_share)
     lines += ["", HEADER.format("by family of outline"), *rows("width", by_family)]
     lines += ["", efficiency(judged)]
-    nulls = [
-        f"{trial.quantity} of fragment {one.number}"
-        for one in judged
-        for trial in one.trials
-        if trial.is_null
-    ]
-    lines += ["", f"Null results: {'; '.join(nulls) or 'none'}."]
+    nulls = Counter(trial.quantity for one in judged for trial in one.trials if trial.is_null)
     codes = Counter(code for one in judged for code in one.codes)
-    lines += ["", f"Warnings: {', '.join(f'{code} {n}' for code, n in codes.most_common()) or 'none'}."]
+    lines += ["", f"Null results: {counted(nulls)}.", "", f"Warnings: {counted(codes)}."]
     return "\n".join(lines)
 
 
