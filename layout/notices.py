@@ -13,6 +13,7 @@ ASSUMPTIONS: dict[str, str] = {
     "outline.shape": "the outline is taken to be smooth, rounded alike left and right, about as wide as high (give or "
     "take half), its sides and ends to bulge by about 2 % of half its width or height (give or take 2), and "
     "its edge to wobble by about 0.35 mm over 8 mm (each give or take half)",
+    "outline.share": "any share of the width is taken to be as likely lost as any other, before the edges speak",
     "lost.sides": "which side is lost was not given: {sides}, where no original edge is traced",
     "margin.mirrored": "the margin on the lost side is taken to be as wide as the one that survives",
     "scale.pointing": "a traced point is taken to be good to {px:g} px (standard uncertainty)",
@@ -64,8 +65,8 @@ WARNINGS: dict[str, str] = {
     "pieces are original edge and which are break",
     "scale.disagree": "the sources of scale contradict one another ({sources}): their errors were enlarged "
     "{ratio} times; check the readings of the marks",
-    "outline.crossing": "views[{view}]: outline[{first}] crosses outline[{second}] within a few pixels of "
-    "({x}, {y}); what stands out is cut off for the measurement and kept in the record",
+    "outline.crossing": "where outline[{first}] and outline[{second}] of views[{view}] meet, they cross within a few "
+    "pixels of ({x}, {y}); what stands out is cut off for the measurement and kept in the record",
     "signs.efficiency": "the widths of signs rest on few effective draws ({percent} % of all): the measured "
     "entries disagree with what is usual; check their texts and ends",
 }

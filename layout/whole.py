@@ -55,7 +55,8 @@ def reconstruct(
     if asymmetry is None:
         asymmetry = ASSUMED_ASYMMETRY_PERCENT
         notices.append(assume("outline.asymmetry", "asymmetry_percent", percent=asymmetry))
-    notices.append(assume("outline.shape", f"{measured.view.face}: outline"))
+    about = f"{measured.view.face}: outline"
+    notices += [assume("outline.shape", about), assume("outline.share", about)]
     outline, caveats = fit_outline(traced, asymmetry / 100, draws, rng)
     notices += caveats
     if outline is None:

@@ -178,7 +178,7 @@ def test_a_tiny_crossing_is_reported(folder: Path) -> None:
     outline = values["views"][0]["outline"]
     outline[0]["points"][-1], outline[1]["points"][0] = [809, 70], [805, 66]
     [fault] = checked(values, folder).faults
-    assert "outline[0] crosses outline[1] within a few pixels" in fault.text
+    assert "where outline[0] and outline[1] of views[0] meet, they cross within a few pixels" in fault.text
 
 
 def test_pieces_out_of_order_are_reported_once_the_break_is_traced(folder: Path) -> None:

@@ -385,7 +385,7 @@ def test_a_tiny_crossing_is_read_and_mended_beside_the_record() -> None:
     record = parse(json.dumps(crossed_record(4)))
     mended, caveats = mend_outlines(record)
     assert [caveat.code for caveat in caveats] == ["outline.crossing"]
-    assert "views[0]: outline[0] crosses outline[1]" in caveats[0].text
+    assert "where outline[0] and outline[1] of views[0] meet, they cross" in caveats[0].text
     assert find_crossings(pieces_of(record.views[0]))
     assert find_crossings(pieces_of(mended.views[0])) == []
     assert mended.views[0].outline[1].state == "doubtful"

@@ -18,7 +18,7 @@ from layout.results import (
     ViewResult,
 )
 from layout.sheet.numbers import plain
-from layout.sheet.prose import CAUTIONS, NOTATION, RELATIVE_SUPPORT, method, summary
+from layout.sheet.prose import CAUTIONS, NOTATION, RELATIVE_SUPPORT, as_sentence, method, summary
 
 Cell = str | Summary | None
 Row = tuple[Cell, ...]
@@ -76,16 +76,20 @@ def compose(record: Record, results: Results, record_sha256: str, decides: str |
     """
     sections = [
         Section("summary", "In short", sentences=summary(results)),
-        Section("warnings", "Warnings", sentences=tuple(warning.text for warning in results.warnings)),
+        Section("warnings", "Warnings", sentences=tuple(as_sentence(one.text) for one in results.warnings)),
         *(_view(view, index) for index, view in enumerate(results.views)),
         _whole(results.reconstructed),
         _capacity(results),
         _ranking(results, decides),
-        Section("assumptions", "What is assumed", sentences=tuple(one.text for one in results.assumptions)),
+        Section(
+            "assumptions",
+            "What is assumed",
+            sentences=tuple(as_sentence(one.text) for one in results.assumptions),
+        ),
         Section(
             "missing",
             "What could not be computed",
-            sentences=tuple(f"{one.text} ({one.result})" for one in results.missing),
+            sentences=tuple(as_sentence(f"{one.text} ({one.result})") for one in results.missing),
         ),
         Section("notation", "How to read the numbers", sentences=NOTATION),
         Section("method", "How it was computed", sentences=method(results)),

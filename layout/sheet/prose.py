@@ -114,6 +114,17 @@ def method(results: Results) -> tuple[str, ...]:
     return tuple(text for used, text in steps if used)
 
 
+def as_sentence(notice: str) -> str:
+    """Return a notice, which begins small so that it can follow a colon, as a sentence of its own.
+
+    Examples
+    --------
+    >>> as_sentence("the bar lies below the face")
+    'The bar lies below the face.'
+    """
+    return f"{notice[:1].upper()}{notice[1:]}."
+
+
 def _say(quantity: Quantity) -> str:
     """Write a quantity for running text."""
     return shown(quantity.summary())
