@@ -485,7 +485,10 @@ def fit_outline(
     weights, caveats = np.ones(draws), []
     if _effective_share(log_weights) < ENOUGH:
         outline, log_proposal = _draw(ladder, draws, rng, heavy=True)
-        log_weights = _log_exact(outline, stations, prior, np.arange(draws)) - log_proposal
+        # some thousand rows at a time: each meets every station
+        parts = np.array_split(np.arange(draws), draws // 5000 + 1)
+        log_exact = [_log_exact(outline, stations, prior, part) for part in parts]
+        log_weights = np.concatenate(log_exact) - log_proposal
         effective = _effective_share(log_weights)
         if effective < TOO_FEW:
             return None, [warn("outline.unsure", percent=round(100 * effective))]
