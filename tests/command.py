@@ -32,9 +32,8 @@ def command(*arguments: object) -> list[str]:
 
 def environment(**changes: str) -> dict[str, str]:
     """Return the environment in which the commands run."""
-    threads = {"OPENBLAS_NUM_THREADS": "1", "OMP_NUM_THREADS": "1"}
     path = os.pathsep.join(filter(None, (str(ROOT), os.environ.get("PYTHONPATH"))))
-    return {**os.environ, **threads, "PYTHONPATH": path, **changes}
+    return {**os.environ, "PYTHONPATH": path, **changes}
 
 
 def run(
