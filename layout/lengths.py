@@ -84,7 +84,7 @@ class Extent:
 
 def measure_extent(outline: Outline, mapped: Mapped) -> Extent:
     """Return the whole tablet's width and height between its tangents."""
-    left, right, upper, lower = np.moveaxis(mapped.outline.map(outline.tangents()), 1, 0)
+    left, right, upper, lower = np.moveaxis(mapped.outline.map(outline.tangents), 1, 0)
     return Extent(
         left=left,
         right=right,

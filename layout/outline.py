@@ -20,12 +20,14 @@ from __future__ import annotations
 
 import math
 from dataclasses import dataclass
+from functools import cached_property
 
 import numpy as np
 from numpy.typing import NDArray
 
 from layout.notices import Caveat, warn
-from layout.quantity import Floats, quantiles
+from layout.quantity import Floats, effective_share, quantiles, resample
+from layout.wobble import matern32, matern52
 
 STATIONS = 60
 """Of one piece of edge, at most."""
@@ -96,7 +98,7 @@ class Outline:
     shape: Floats
     wobbles: Wobbles
 
-    @property
+    @cached_property
     def halves(self) -> tuple[Floats, Floats, Floats, Floats]:
         """Left, right, upper and lower half extent in mm, each of shape (N,)."""
         return _halves(self.log_width, self.shape)
@@ -106,8 +108,9 @@ class Outline:
         """Standard deviation of the edge's wobble, shape (N,)."""
         return np.asarray(SIZES_MM[self.wobbles.size])
 
+    @cached_property
     def tangents(self) -> Floats:
-        """Return where the outline touches its left, right, upper and lower tangent, shape (N, 4, 2)."""
+        """Where the outline touches its left, right, upper and lower tangent, shape (N, 4, 2)."""
         left, right, upper, lower = self.halves
         zero = np.zeros_like(left)
         own = np.stack(
@@ -264,7 +267,7 @@ class _Implicit:
         n = np.where(y < 0, above, below)
         x_abs, y_abs = np.maximum(np.abs(x), NO_MM), np.maximum(np.abs(y), NO_MM)
         u, v = x_abs / np.where(x < 0, left, right), y_abs / np.where(y < 0, upper, lower)
-        # far outside the ladder's first guesses may lie; there the bulges stop to matter
+        # a first guess of the ladder may leave points far outside, where the bulges must not turn F round
         u2, v2 = np.minimum(u * u, 2.0), np.minimum(v * v, 2.0)
         end, side = shape[:, BULGE_ENDS, None], shape[:, BULGE_SIDES, None]
         in_u, in_v = np.maximum(1 - side * v2, 0.3), np.maximum(1 - end * u2, 0.3)
@@ -379,18 +382,6 @@ def _correlations(apart: Floats) -> Floats:
     )
 
 
-def matern32(ratio: Floats) -> Floats:
-    """Return the Matern 3/2 correlation at a distance over the correlation length."""
-    s = np.sqrt(3) * ratio
-    return np.asarray((1 + s) * np.exp(-s))
-
-
-def matern52(ratio: Floats) -> Floats:
-    """Return the Matern 5/2 correlation at a distance over the correlation length."""
-    s = np.sqrt(5) * ratio
-    return np.asarray((1 + s + s**2 / 3) * np.exp(-s))
-
-
 @dataclass(frozen=True, eq=False)
 class _Prior:
     """Gaussian prior of the shape parameters given the log width: mean (G, 10) and sd (10,)."""
@@ -483,22 +474,23 @@ def fit_outline(
     rows = rng.permutation(draws)[:CHECKED]
     log_weights = _log_exact(outline, stations, prior, rows) - log_proposal[rows]
     weights, caveats = np.ones(draws), []
-    if _effective_share(log_weights) < ENOUGH:
+    if effective_share(np.exp(log_weights - log_weights.max())) < ENOUGH:
         outline, log_proposal = _draw(ladder, draws, rng, heavy=True)
         # some thousand rows at a time: each meets every station
         parts = np.array_split(np.arange(draws), draws // 5000 + 1)
         log_exact = [_log_exact(outline, stations, prior, part) for part in parts]
         log_weights = np.concatenate(log_exact) - log_proposal
-        effective = _effective_share(log_weights)
+        weights = np.exp(log_weights - log_weights.max())
+        effective = effective_share(weights)
         if effective < TOO_FEW:
             return None, [warn("outline.unsure", percent=round(100 * effective))]
-        weights = np.exp(log_weights - log_weights.max())
         caveats.append(warn("outline.reweighted", percent=round(100 * effective)))
     holds = _holds(outline, _inner(traced.breaks, stations.points))
     weights = weights * holds
-    if holds.max() < IMPOSSIBLE or _effective_share(np.log(np.maximum(weights, 1e-300))) < TOO_FEW**2:
+    if holds.max() < IMPOSSIBLE or effective_share(weights) < TOO_FEW**2:
         return None, [*caveats, warn("outline.break_outside")]
-    return _resampled(outline, weights, rng), caveats
+    chosen = resample(weights, rng)
+    return Outline(outline.log_width[chosen], outline.shape[chosen], outline.wobbles.at(chosen)), caveats
 
 
 def _fit(traced: Traced, asymmetry: float) -> tuple[_Stations, _Prior, _Ladder]:
@@ -578,6 +570,7 @@ def _climb(
     """Fit the shape on every rung by damped Gauss-Newton; ``root`` (M, M) whitens the residuals."""
     precision = 1 / prior.sd**2
     mean = prior.mean(log_width)
+    # how far one step may go: mm, radians, logarithms, shares
     limit = np.array([10.0, 10.0, 0.05, 0.2, 0.4, 0.4, 0.05, 0.05, 0.02, 0.02])
     for _ in range(steps):
         away, slopes = linearised(points, log_width, shape)
@@ -611,7 +604,7 @@ def _weigh(stations: _Stations, prior: _Prior, log_width: Floats, shape: Floats,
 
 
 def _relaid(ladder: _Ladder) -> Floats:
-    """Lay the rungs anew over the mass of the first ladder, one rung beyond it on each side."""
+    """Lay the rungs anew over the mass of the first ladder, and a little beyond it on each side."""
     fine = np.linspace(ladder.log_width[0], ladder.log_width[-1], 2000)
     log_p = np.interp(fine, ladder.log_width, ladder.log_marginal)
     inside = np.flatnonzero(log_p > log_p.max() - NEGLIGIBLE)
@@ -664,12 +657,6 @@ def _log_exact(outline: Outline, stations: _Stations, prior: _Prior, rows: NDArr
     return np.asarray(wobbles.log_prior - 0.5 * misfit)
 
 
-def _effective_share(log_weights: Floats) -> float:
-    """Return the effective sample size over the sample size (Kong 1992)."""
-    weights = np.exp(log_weights - log_weights.max())
-    return float(weights.sum() ** 2 / (weights**2).sum() / len(weights))
-
-
 def _inner(breaks: Floats, edges: Floats) -> Floats:
     """Return the break's points that stand clear of the edges.
 
@@ -704,12 +691,3 @@ def _inside(breaks: Floats, outline: Outline, rows: NDArray[np.intp]) -> Floats:
     # the logistic form of the normal distribution (Bowling et al. 2009) is near enough for a soft wall
     z = -away.max(axis=1) / outline.wobble_mm[rows]
     return np.asarray(1 / (1 + np.exp(-np.clip(1.702 * z, -40, 40))))
-
-
-def _resampled(outline: Outline, weights: Floats, rng: np.random.Generator) -> Outline:
-    """Draw rows by weight (systematic), and permute them, so that rows of other steps pair at random."""
-    draws = len(weights)
-    levels = np.cumsum(weights) / weights.sum()
-    rows = np.minimum(np.searchsorted(levels, (np.arange(draws) + rng.random()) / draws), draws - 1)
-    rows = rng.permutation(rows)
-    return Outline(outline.log_width[rows], outline.shape[rows], outline.wobbles.at(rows))

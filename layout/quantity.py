@@ -105,6 +105,28 @@ def quantiles(values: Floats, shares: Sequence[float]) -> Floats:
     return np.interp([share * last for share in shares], np.arange(last + 1), np.sort(values))
 
 
+def effective_share(weights: Floats) -> float:
+    """Return the effective sample size of weighted draws over their number (Kong 1992).
+
+    Examples
+    --------
+    >>> effective_share(np.array([1.0, 1.0, 0.0, 0.0]))
+    0.5
+    """
+    return float(weights.sum() ** 2 / (weights**2).sum() / len(weights))
+
+
+def resample(weights: Floats, rng: np.random.Generator) -> NDArray[np.intp]:
+    """Return as many rows as there are weights, in proportion to them: systematically, then permuted.
+
+    Permuted, so that rows of independent fits pair at random.
+    """
+    rows = len(weights)
+    edges = np.cumsum(weights)
+    chosen = np.searchsorted(edges / edges[-1], (np.arange(rows) + rng.random()) / rows)
+    return rng.permutation(np.minimum(chosen, rows - 1))
+
+
 def significant(number: float, digits: int = SIGNIFICANT) -> float:
     """Round a number to so many significant digits.
 

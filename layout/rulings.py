@@ -13,6 +13,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from layout.quantity import Floats
+from layout.wobble import matern52
 
 STATIONS = 40
 SIZES_MM = np.geomspace(0.015, 1.0, 12)
@@ -148,8 +149,7 @@ def _fit_given_wobble(trace: _Trace) -> _GivenWobble:
     """Return generalised least squares of one line for every wobble, with its restricted likelihood."""
     design = np.column_stack([np.ones_like(trace.along), trace.along, trace.across]) / trace.noise[:, None]
     apart = np.abs(trace.along[:, None] - trace.along) / LENGTHS_MM[:, None, None]
-    s = np.sqrt(5) * apart
-    correlation = (1 + s + s**2 / 3) * np.exp(-s) / np.outer(trace.noise, trace.noise)
+    correlation = matern52(apart) / np.outer(trace.noise, trace.noise)
     values, bases = np.linalg.eigh(correlation)
     turned = bases.transpose(0, 2, 1) @ design
     variance = SIZES_MM[:, None] ** 2 * np.maximum(values, 0.0)[:, None] + 1  # (L, S, P)

@@ -20,7 +20,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from layout.notices import Notice, assume, warn
-from layout.quantity import Floats
+from layout.quantity import Floats, effective_share, resample
 
 Ints = NDArray[np.intp]
 
@@ -171,13 +171,12 @@ def fit_sign_widths(
     rows = len(scale_ratio)
     proposal = _propose(grid, rows, rng)
     weight = np.exp(proposal.log_weight - proposal.log_weight.max())
-    chosen = _resample(weight, rng)
+    chosen = resample(weight, rng)
     full = None
     if len(written.lengths) or prior.sd_log < FLAT_SD_LOG:
         sd = proposal.full_precision[chosen] ** -0.5
         full = np.exp(proposal.full_log[chosen] + sd * rng.standard_normal(rows)) * scale_ratio
-    efficiency = float(weight.sum() ** 2 / (weight**2).sum() / rows)
-    notices = _notices(written, prior, efficiency=efficiency)
+    notices = _notices(written, prior, efficiency=effective_share(weight))
     return SignWidths(
         full, np.vstack((np.ones(rows), proposal.ratios.T[:, chosen])).T, len(written.lengths), notices
     )
@@ -280,14 +279,6 @@ def _approximate(grid: _Grid) -> tuple[Floats, Floats, Floats]:
     log_mass = grid.log_prior + grid.full_given(np.arange(nodes), mode)[2] + _log_prior(mode)
     log_mass += 0.5 * np.linalg.slogdet(covariance)[1]
     return mode, covariance, log_mass
-
-
-def _resample(weight: Floats, rng: np.random.Generator) -> Ints:
-    """Return as many rows, drawn in proportion to their weights: systematically, then permuted."""
-    rows = len(weight)
-    edges = np.cumsum(weight)
-    chosen = np.searchsorted(edges / edges[-1], (np.arange(rows) + rng.random()) / rows)
-    return rng.permutation(np.minimum(chosen, rows - 1))
 
 
 def _notices(entries: MeasuredEntries, prior: FullPrior, *, efficiency: float) -> tuple[Notice, ...]:

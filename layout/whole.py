@@ -46,7 +46,8 @@ def reconstruct(
     tuple
         The whole, or None, and the notices: what was assumed, and why there is no whole.
     """
-    traced, notices = _trace(measured)
+    traced = _trace(measured)
+    notices: list[Notice] = []
     names = {name for name, _ in traced.pieces}
     if not names & {"left", "right"} or not names & {"upper", "lower"}:
         text = "needs original edge on the left or right, and above or below, three points or more each"
@@ -92,7 +93,7 @@ def reconstruct(
     return Whole(extent.width, lost, lost_height, reconstructed), notices
 
 
-def _trace(measured: MeasuredView) -> tuple[Traced, list[Notice]]:
+def _trace(measured: MeasuredView) -> Traced:
     """Return the view's sound edges and its break in the face frame."""
     view, mm_per_px = measured.view, measured.scale.outline.nominal_mm_per_px
     points = [
@@ -103,7 +104,7 @@ def _trace(measured: MeasuredView) -> tuple[Traced, list[Notice]]:
     edges = tuple((p.edge, mm) for p, mm in points if p.edge != "break" and p.state == "sound")
     breaks = [mm for p, mm in points if p.edge == "break"]
     pointing_mm = measured.pointing_mm * mm_per_px / measured.scale.face.nominal_mm_per_px
-    return Traced(edges, np.vstack(breaks) if breaks else np.empty((0, 2)), pointing_mm), []
+    return Traced(edges, np.vstack(breaks) if breaks else np.empty((0, 2)), pointing_mm)
 
 
 def _lost_sides(record: Record, edges: set[str]) -> tuple[tuple[str, ...], list[Notice]]:
@@ -176,7 +177,7 @@ def _lost_height(outline: Outline, traced: Traced, mapped: Mapped) -> Floats:
     Where the edge still stands at the tablet's highest or lowest point nothing is lost there, nor is what would be less
     than the edge's wobble.
     """
-    tangents = outline.tangents()
+    tangents = outline.tangents
     everything = np.vstack([traced.breaks, *(points for _, points in traced.pieces)])
     lost = np.zeros(len(tangents))
     for side, place, down in (("upper", 2, -1), ("lower", 3, 1)):

@@ -14,10 +14,9 @@ from layout.outline import (
     feet,
     fit_outline,
     linearised,
-    matern32,
-    matern52,
 )
 from layout.quantity import Floats
+from layout.wobble import matern32, matern52
 from tests.coverage import exact_limits
 
 WIDTH, HEIGHT = 100.0, 110.0
@@ -139,7 +138,7 @@ def test_the_polygon_has_the_area_of_the_formula() -> None:
 def test_tangents_touch_the_polygon() -> None:
     log_width, shape = at(SHAPE)
     outline = outline_of(SHAPE)
-    assert distances(outline.tangents()[0], log_width, shape) == pytest.approx(0.0, abs=1e-9)
+    assert distances(outline.tangents[0], log_width, shape) == pytest.approx(0.0, abs=1e-9)
     assert np.abs(distances(outline.polygon(0.5), log_width, shape)).max() < 1e-6
 
 
