@@ -10,6 +10,10 @@ from typing import TYPE_CHECKING
 
 if TYPE_CHECKING:
     from layout.errors import CallError, LayoutError, PhotographError, RecordError
+    from layout.image.photograph import read_photograph
+    from layout.image.target import find_card
+    from layout.image.ticks import find_divisions
+    from layout.lens import read_lens, read_lenses
     from layout.pipeline import measure
     from layout.quantity import Quantity
     from layout.record.check import check
@@ -28,9 +32,14 @@ __all__ = [
     "RecordError",
     "Results",
     "check",
+    "find_card",
+    "find_divisions",
     "measure",
     "parse",
     "read",
+    "read_lens",
+    "read_lenses",
+    "read_photograph",
     "write",
 ]
 
@@ -43,9 +52,14 @@ _HOMES = {
     "RecordError": "layout.errors",
     "Results": "layout.results",
     "check": "layout.record.check",
+    "find_card": "layout.image.target",
+    "find_divisions": "layout.image.ticks",
     "measure": "layout.pipeline",
     "parse": "layout.record.files",
     "read": "layout.record.files",
+    "read_lens": "layout.lens",
+    "read_lenses": "layout.lens",
+    "read_photograph": "layout.image.photograph",
     "write": "layout.record.files",
 }
 

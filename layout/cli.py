@@ -15,9 +15,10 @@ from typing import TYPE_CHECKING, Annotated
 import typer
 
 from layout import __version__
+from layout.cli_pictures import PhotoFiles, RecordFile, lens, rectify, target, ticks, write_whole
 from layout.console import emit, printable, say, speak_utf8, waiting
 from layout.errors import CallError, LayoutError
-from layout.files import reason, replace_file
+from layout.files import reason
 
 if TYPE_CHECKING:
     from layout.record.model import Record
@@ -32,10 +33,6 @@ IN_SHORT = ("summary", "warnings", "ranking")
 app = typer.Typer(add_completion=False, pretty_exceptions_enable=False, rich_markup_mode=None)
 
 # whether a file can be read is found out by reading it, so that there is one message for it
-RecordFile = Annotated[
-    Path, typer.Argument(metavar="RECORD", help="a record, NAME.fragment.json", readable=False)
-]
-PhotoFiles = Annotated[list[Path], typer.Argument(metavar="PHOTO...", help="JPEG, PNG, TIFF", readable=False)]
 Folder = Annotated[Path, typer.Argument(metavar="FOLDER", help="where to put it", readable=False)]
 NewRecord = Annotated[
     Path, typer.Option("--output", "-o", metavar="RECORD", help="the record to begin", readable=False)
@@ -98,7 +95,7 @@ def demo(folder: Folder = Path("demo")) -> None:
     record, results = _measured(path, DRAWS, SEED)
     written = [folder / f"sheet{form}" for form in FORMS]
     for file in written:
-        _write(file, sheet(file.suffix, record, results, path))
+        write_whole(file, sheet(file.suffix, record, results, path))
     _print(record, results, path, IN_SHORT)
     emit("\n" + "".join(f"{file}\n" for file in (path, *written)))
 
@@ -125,6 +122,13 @@ def new(
     with waiting("reading the photographs"):
         begun = begin(name or record.name.removesuffix(RECORD_ENDING), photographs, record.parent)
     write(begun, record)
+    for photograph in begun.photographs:
+        focal = photograph.focal_length
+        if focal is not None:
+            say(
+                f"{photograph.file}: focal length {focal.px:.0f} px (standard uncertainty {focal.sd:.0f} px) from the "
+                "camera data; the distance of the lens will follow from it and the scale"
+            )
     say(f"{record}: begun, with {len(photographs)} photograph{'s' if len(photographs) > 1 else ''}")
 
 
@@ -191,8 +195,12 @@ def sheet(record: RecordFile, file: SheetFile) -> None:
         raise CallError(message, file=file)
     read, results = _measured(record, DRAWS, SEED)
     with waiting("setting the sheet"):
-        _write(file, sheet(form, read, results, record))
+        write_whole(file, sheet(form, read, results, record))
     say(f"{file}: written")
+
+
+for command in (ticks, target, lens, rectify):
+    app.command()(command)
 
 
 def _measured(path: Path, draws: int, seed: int) -> tuple[Record, Results]:
@@ -201,9 +209,10 @@ def _measured(path: Path, draws: int, seed: int) -> tuple[Record, Results]:
 
     record = read(path)
     with waiting("measuring"):
+        from layout.lens import read_lenses
         from layout.pipeline import measure
 
-        return record, measure(record, draws=draws, seed=seed)
+        return record, measure(record, draws=draws, seed=seed, lenses=read_lenses(record, path.parent))
 
 
 def _print(record: Record, results: Results, path: Path, sections: tuple[str, ...]) -> None:
@@ -212,15 +221,6 @@ def _print(record: Record, results: Results, path: Path, sections: tuple[str, ..
     from layout.sheet.terminal import to_text
 
     emit(to_text(content_of(record, results, path), sections))
-
-
-def _write(file: Path, data: bytes) -> None:
-    """Write a file of results whole or not at all."""
-    try:
-        replace_file(file, data)
-    except OSError as error:
-        message = f"cannot be written: {reason(error)}"
-        raise CallError(message, file=file) from None
 
 
 def _refuse(lines: list[str]) -> int:

@@ -21,6 +21,11 @@ ASSUMPTIONS: dict[str, str] = {
     "scale.below_face": "how far the bar lies below the face was not given: {mm:.1f} mm with a standard "
     "uncertainty of {sd:.1f} mm, anywhere from the table to the face",
     "scale.distance": "the distance of the lens was not given: about {mm:g} mm, from half to twice that",
+    "scale.focal": "the distance of the lens was not given: it follows from the scale and the {name}, which is "
+    "taken to be good to {percent:.1f} %",
+    "scale.bar": "the divisions of the bar are taken to be printed where they should be, to 0.1 % of any distance",
+    "scale.rocking": "the face is taken to lie parallel to the plane of the marks, whose tilt they show, within "
+    "{deg:g} degrees about each axis (standard uncertainty)",
     "scale.tilt": "how square the camera stood to the face was not given: {deg:g} degrees about each axis "
     "(standard uncertainty)",
     "scale.ppi": "the stated resolution is taken to be good to {percent:g} % (standard uncertainty)",
@@ -47,7 +52,8 @@ ASSUMPTIONS: dict[str, str] = {
 WARNINGS: dict[str, str] = {
     "pitch.ambiguous": "{face}: the lines can be numbered in more than one way: a pitch of {best} was taken, "
     "possible too: {others}; trace a ruling between two neighbouring lines",
-    "lens.unused": "{face}: the lens file is not applied: the distortion of the lens is still in the numbers",
+    "lens.unread": "{face}: the lens file {file} was not given to the measurement: the distortion of the lens is still "
+    "in the numbers; pass lenses=layout.read_lenses(record, folder)",
     "outline.state": "{face}: edges marked abraded or doubtful were left out as evidence of shape",
     "outline.proportion": "{face}: no original edge survives {side}: the height is not known, and the width "
     "rests on what tablets are like",

@@ -6,6 +6,7 @@ that a change in one step does not shuffle another.
 
 from __future__ import annotations
 
+from collections.abc import Mapping
 from dataclasses import dataclass, replace
 
 import numpy as np
@@ -15,6 +16,7 @@ from layout.candidates.ranking import Ranked, rank
 from layout.candidates.width import Proposal, Space
 from layout.clearance import Clearance, find_widest, learn_clearance
 from layout.errors import CallError
+from layout.lens import Lens
 from layout.notices import Assumption, Caveat, Missing, Notice, warn
 from layout.quantity import Floats, Quantity
 from layout.record.crossings import mend_outlines
@@ -38,7 +40,9 @@ SCALE, LINES, PITCH, EXTENT, OUTLINE, SIGNS, CLEARANCE, RANKING = range(8)
 LEAST_DRAWS, MOST_DRAWS = 100, 1_000_000
 
 
-def measure(record: Record, draws: int = 10_000, seed: int = 0) -> Results:
+def measure(
+    record: Record, draws: int = 10_000, seed: int = 0, *, lenses: Mapping[str, Lens] | None = None
+) -> Results:
     """Measure a record.
 
     Parameters
@@ -49,11 +53,13 @@ def measure(record: Record, draws: int = 10_000, seed: int = 0) -> Results:
         How many joint draws, 100 to 1,000,000.
     seed
         Of all random numbers, 0 or more: the same record, seed and versions give the same results.
+    lenses
+        The lens files that views name, by their names: ``read_lenses(record, folder)``.
 
     Raises
     ------
     CallError
-        If draws or seed are out of range.
+        If draws or seed are out of range, or a lens does not belong to its photograph.
     """
     if not LEAST_DRAWS <= draws <= MOST_DRAWS:
         message = f"needs {LEAST_DRAWS} to {MOST_DRAWS} draws, has {draws}"
@@ -66,7 +72,7 @@ def measure(record: Record, draws: int = 10_000, seed: int = 0) -> Results:
     views = []
     for index, view in enumerate(record.views):
         steps = [np.random.default_rng([seed, step, index]) for step in (SCALE, LINES, PITCH, EXTENT)]
-        views.append(measure_view(record, view, draws, steps))
+        views.append(measure_view(record, view, draws, steps, lenses or {}))
         notices += _placed(views[-1].notices, index)
     main = _main_view(views)
     whole, note = reconstruct(record, views[main], draws, np.random.default_rng([seed, OUTLINE, main]))

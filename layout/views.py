@@ -3,17 +3,22 @@
 from __future__ import annotations
 
 import itertools
+from collections.abc import Mapping
 from dataclasses import dataclass
 
 import numpy as np
 
-from layout.frame import Frame, Scale, fit_scale, measure_scale, pointing_of
+from layout.frame import Frame, Scale, measure_scale
 from layout.lengths import Mapped, measure_column, polygon_area, polygon_centroid
+from layout.lens import Lens
 from layout.notices import Missing, Notice, warn
 from layout.quantity import Floats, Quantity, quantiles
-from layout.record.model import Record, Ruling, View
+from layout.record.model import Photograph, Record, Ruling, View
 from layout.results import ColumnResult, PitchResult, Preserved, RulingResult, ScaleResult, ViewResult
 from layout.rulings import Line, Pitch, fit_lines, fit_pitch
+from layout.scale import fit_scale
+from layout.sources import pointing_of
+from layout.straighten import free_of_lens, moved
 
 LEAST_POINTS = 3
 
@@ -48,7 +53,11 @@ class MeasuredView:
 
 
 def measure_view(
-    record: Record, view: View, draws: int, generators: list[np.random.Generator]
+    record: Record,
+    view: View,
+    draws: int,
+    generators: list[np.random.Generator],
+    lenses: Mapping[str, Lens],
 ) -> MeasuredView:
     """Measure one view.
 
@@ -60,9 +69,23 @@ def measure_view(
         How many rows.
     generators
         One each for scale, rulings, pitch and preserved extent.
+    lenses
+        By the names by which views name them.
+
+    Raises
+    ------
+    CallError
+        If a lens does not belong to the photograph, or shows nothing where a point was traced.
     """
     for_scale, for_lines, for_pitch, for_extent = generators
-    scale, notices = fit_scale(view, record.photograph_of(view).size, record.thickness, draws, for_scale)
+    photograph = record.photograph_of(view)
+    lens, notices = _lens_of(view, photograph, lenses)
+    straight = view if lens is None else free_of_lens(view, lens)
+    scale, note = fit_scale(straight, photograph, record.thickness, draws, for_scale, lens)
+    notices += note
+    if scale.model == "perspective":
+        straight = moved(straight, scale.level)
+    view = straight
     frame = find_frame(view, scale)
     mapped = Mapped.of(scale, frame)
     pointing_mm = pointing_of(view)[0] * scale.face.nominal_mm_per_px
@@ -95,6 +118,18 @@ def measure_view(
         preserved=None if polygon is None else _preserved(polygon, mapped, pointing_mm, draws, for_extent),
         notices=(*notices, *note, *_ambiguous(view, pitch), *_left_alone(view)),
     )
+
+
+def _lens_of(
+    view: View, photograph: Photograph, lenses: Mapping[str, Lens]
+) -> tuple[Lens | None, list[Notice]]:
+    """Return the lens that a view names, for its photograph's size, and a warning where nobody gave it."""
+    name = view.scale.lens
+    if name is None:
+        return None, []
+    if name not in lenses:
+        return None, [warn("lens.unread", face=view.face, file=name)]
+    return lenses[name].for_size(photograph.size), []
 
 
 def find_frame(view: View, scale: Scale) -> Frame:
@@ -206,8 +241,6 @@ def _ambiguous(view: View, pitch: Pitch | None) -> list[Notice]:
 def _left_alone(view: View) -> list[Notice]:
     """Warn of what a view holds that its measurement does not use."""
     notes: list[Notice] = []
-    if view.scale.lens is not None:
-        notes.append(warn("lens.unused", face=view.face))
     if any(piece.state != "sound" for piece in view.outline):
         notes.append(warn("outline.state", face=view.face))
     return notes

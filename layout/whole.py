@@ -164,11 +164,11 @@ def _drawn(outline: Outline, measured: MeasuredView) -> ReconstructedOutline:
     """Return the outline as polygons: the median, and the edges of the 95 % band."""
     mm_per_px = measured.scale.outline.nominal_mm_per_px
     median, inner, outer = (outline.polygon(quantile) for quantile in (0.5, *BAND))
-    return ReconstructedOutline(
-        points_mm=median,
-        points_px=measured.frame.to_px(median, mm_per_px),
-        band_px=(measured.frame.to_px(inner, mm_per_px), measured.frame.to_px(outer, mm_per_px)),
-    )
+    seen = [
+        measured.scale.to_photograph(measured.frame.to_px(polygon, mm_per_px))
+        for polygon in (median, inner, outer)
+    ]
+    return ReconstructedOutline(points_mm=median, points_px=seen[0], band_px=(seen[1], seen[2]))
 
 
 def _lost_height(outline: Outline, traced: Traced, mapped: Mapped) -> Floats:

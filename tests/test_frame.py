@@ -8,9 +8,10 @@ from typing import Any
 import numpy as np
 import pytest
 
-from layout.frame import Frame, Plane, Scale, find_homography, fit_scale
+from layout.frame import Frame, Plane, Scale, find_homography
 from layout.notices import Caveat, Notice
 from layout.record.model import Record
+from layout.scale import fit_scale
 
 SIZE = (6001, 4001)
 CENTRE = np.array([3000.0, 2000.0])
@@ -37,7 +38,9 @@ def fit(
             **({} if thickness is None else {"thickness": thickness}),
         }
     )
-    return fit_scale(record.views[0], SIZE, record.thickness, draws, np.random.default_rng(0))
+    return fit_scale(
+        record.views[0], record.photographs[0], record.thickness, draws, np.random.default_rng(0)
+    )
 
 
 def face_of(scale: Scale) -> float:

@@ -17,7 +17,7 @@ README = (ROOT / "README.md").read_text(encoding="utf-8")
 def test_every_command_is_in_the_readme_and_none_other(tmp_path: Path) -> None:
     named = set(re.findall(r"^    layout (\w+)", README, re.MULTILINE))
     helped = set(re.findall(r"^[│\s]+(\w+)  ", run("--help", cwd=tmp_path).out, re.MULTILINE))
-    assert named == {"demo", "new", "check", "measure", "rank", "sheet"}
+    assert named == {"demo", "new", "check", "measure", "rank", "sheet", "ticks", "target", "lens", "rectify"}
     assert named <= helped
 
 

@@ -11,9 +11,9 @@ import layout
 
 HOME = Path(layout.__file__).parent
 ORDER = (
-    "errors quantity notices files image record sexagesimal signs frame wobble rulings outline lengths sign_widths "
-    "clearance candidates.width candidates.ranking results candidates.deciding views whole pipeline console sheet "
-    "demo cli __main__"
+    "errors quantity notices files least_squares homography lens image record sexagesimal signs frame sources scene "
+    "aslant scale straighten wobble rulings outline lengths sign_widths clearance candidates.width candidates.ranking "
+    "results candidates.deciding views rectify whole pipeline console sheet demo cli_pictures cli __main__"
 ).split()
 
 

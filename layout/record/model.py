@@ -67,24 +67,39 @@ class Measured(_Part):
     sd: NotNegative
 
 
+class FocalLength(_Part):
+    """A focal length in pixels of the upright photograph, and its standard uncertainty."""
+
+    px: Positive
+    sd: Positive
+
+
 class Photograph(_Part):
-    """A photograph beside the record; ``size`` is (width, height) in pixels once it stands upright."""
+    """A photograph beside the record; ``size`` is (width, height) in pixels once it stands upright.
+
+    ``focal_length`` is what the camera wrote into it, if the photograph was not cropped.
+    """
 
     id: Name
     file: Name
     sha256: Sha256 | None = None
     size: tuple[Count, Count]
     of: Literal["object", "scan", "cast", "print"] = "object"
+    focal_length: FocalLength | None = None
     credit: Text = ""
     licence: Text = ""
 
 
 class Mark(_Part):
-    """A division of a scale bar (``mm`` is a number) or a point of a flat target (``mm`` is ``(X, Y)``)."""
+    """A division of a scale bar (``mm`` is a number) or a point of a flat target (``mm`` is ``(X, Y)``).
+
+    ``sd_px`` is the standard uncertainty of one coordinate of its place, where a program found it.
+    """
 
     bar: Name = "a"
     at: Point
     mm: Reading
+    sd_px: Positive | None = None
 
 
 class Known(_Part):

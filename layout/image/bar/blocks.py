@@ -26,6 +26,10 @@ from layout.image.photograph import Pixels
 from layout.quantity import Floats
 
 LEAST_BLOCK_PX = 12.0
+REACH, ROWS = 0.7, 77
+"""How far across blocks are followed, in pitches, and on how many rows at most: some are thin."""
+LEAST_CONTRAST = 0.6
+"""Edges of blocks are alike; frames and figures beside them make fainter ones."""
 
 
 def share_of_lesser_level(pixels: Pixels, guide: Guide, period: float) -> float:
@@ -42,7 +46,7 @@ def share_of_lesser_level(pixels: Pixels, guide: Guide, period: float) -> float:
 def try_blocks(pixels: Pixels, guide: Guide, pitch: float) -> Trial | None:
     """Measure blocks; where their row runs askew to the line, on a better line once or twice more."""
     for last in (False, False, True):
-        ribbon = cut_rows(pixels, guide, 0.6 * pitch, 0.7 * pitch)
+        ribbon = cut_rows(pixels, guide, 0.6 * pitch, REACH * pitch, ROWS)
         width = float(np.clip(0.4 * pitch, 4.0, 30.0))
         numbered = _number_edges(ribbon, guide, pitch, width)
         if numbered is None:
@@ -80,7 +84,7 @@ def _number_edges(
     high = strength[peaks_of(strength, 0.0)]
     if len(high) == 0:
         return None
-    peaks = peaks_of(strength, 0.35 * float(np.quantile(high, 0.9, method="higher")))
+    peaks = peaks_of(strength, LEAST_CONTRAST * float(np.quantile(high, 0.9, method="higher")))
     signs = np.sign(seen.odd[peaks])
     reach = max(2, int(0.4 * width / step))
     # before a rise the even filter sees a dark line, behind it a bright one

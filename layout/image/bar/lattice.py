@@ -155,7 +155,7 @@ def fit_lattice(number: np.ndarray, places: Floats, signs: Floats, *, perspectiv
         seen = (a + b * n / span) / below
         misfit = places - seen - spread * signs
         columns = np.array([1 / below, n / span / below, -seen * n / span / below, signs])[free]
-        weighted = columns * _biweight(misfit)
+        weighted = columns * (_biweight(misfit) if count >= sum(free) + 3 else 1.0)
         change = np.linalg.solve(weighted @ columns.T + tiny, weighted @ misfit)
         values[free] += change
         if np.abs(change).max() < ENOUGH_PX:

@@ -85,9 +85,11 @@ class Seen:
     sd: Floats
 
 
-def cut_rows(pixels: Pixels, guide: Guide, beyond: float, half_height: float) -> Ribbon:
+def cut_rows(
+    pixels: Pixels, guide: Guide, beyond: float, half_height: float, most: int = MOST_ROWS
+) -> Ribbon:
     """Cut a ribbon at the photograph's own resolution along the line."""
-    rows = int(np.clip(2 * half_height + 1, 5, MOST_ROWS)) | 1
+    rows = int(np.clip(2 * half_height + 1, 5, most)) | 1
     reach = guide.half + beyond
     size = (rows, int(2 * reach) + 1)
     return cut_ribbon(pixels, guide, (reach, half_height), size, cubic=half_height < FINE_REACH)

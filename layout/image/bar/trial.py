@@ -17,9 +17,13 @@ Kind = Literal["ticks", "blocks"]
 LEAST: dict[Kind, int] = {"ticks": 6, "blocks": 4}
 LEAST_SHARE: dict[Kind, float] = {"ticks": 0.7, "blocks": 0.75}
 LEAST_ALIKE = 0.45
+ALIKE = 0.6
+"""How strong the edge of a block is at least, as a share of the usual one."""
 MOST_SCATTER: dict[Kind, float] = {"ticks": 0.03, "blocks": 0.012}
 """How much divisions may scatter about their places, in pitches, besides so many pixels: ``SCATTER_PX``."""
 SCATTER_PX = 0.06
+LEAST_TALL: dict[Kind, float] = {"ticks": 0.2, "blocks": 0.04}
+"""How far across divisions must reach, in pitches."""
 MOST_CLUTTER: dict[Kind, float] = {"ticks": 0.35, "blocks": 1.0}
 """How many more lines or edges, as strong, may stand between the divisions, for each of them."""
 
@@ -94,7 +98,8 @@ def judge(kind: Kind, guide: Guide, seen: Seen, band: tuple[float, float], lengt
     if there.sum() < LEAST[kind]:
         return None
     usual = float(np.median(seen.contrast[there]))
-    there &= (seen.contrast > PRESENT * usual) & (seen.contrast < usual / PRESENT)
+    least = PRESENT if kind == "ticks" else ALIKE
+    there &= (seen.contrast > least * usual) & (seen.contrast < usual / least)
     if there.sum() < LEAST[kind]:
         return None
     lattice = fit_lattice(number[there], seen.places[there], signs[there])
@@ -114,7 +119,7 @@ def judge(kind: Kind, guide: Guide, seen: Seen, band: tuple[float, float], lengt
         there[inner].mean() >= LEAST_SHARE[kind]
         and scatter < MOST_SCATTER[kind] * pitch + SCATTER_PX
         and (there[inner].all() or there.sum() > LEAST[kind] + 1)
-        and tall >= max(0.2 * pitch, 3.0)
+        and tall >= max(LEAST_TALL[kind] * pitch, 3.0)
         and _alike(number[there], contrast, kind)
         and _clutter(seen, lattice, usual) <= MOST_CLUTTER[kind] * there.sum()
     )
