@@ -23,8 +23,12 @@ WIDEST_TILT_SD = float(np.sin(np.radians(25.0)))
 """Of a camera of which nothing is known: the sine of the tilt about each axis."""
 STEEPEST = 0.9
 LEAST_ANGLE_DEG = 30.0
+DISTANCES = (np.log(20.0), np.log(1e6))
+"""Logarithms of mm, from a loupe to a telescope."""
 STARTS = ((0.0, 0.0), (0.25, 0.25), (0.25, -0.25), (-0.25, 0.25), (-0.25, -0.25))
 KEPT_CHI2 = 16.0
+FARFETCHED_CHI2 = 14.0
+"""A tilt and a distance less likely than this beforehand, by three standard deviations or so, explain nothing."""
 SHARPEST = 1e-4
 """No logarithm of a distance is taken to be known better."""
 SCENE, POSE = 4, 3
@@ -78,8 +82,9 @@ def fit_aslant(
     count = 2 * sum(len(flat.mm) for flat in flats)
     of_marks = _marks_chi2(best.parameters, flats, centre_px)
     rich, plain = len(best.parameters), len(square.parameters)
-    if len(flats) > 1 and not _explained(of_marks, count - rich, flats):
-        return []  # a bar that is misread could pass for a slanting one, were it not for its own even divisions
+    likely = best.chi2 - of_marks < FARFETCHED_CHI2 and _explained(of_marks, count - rich, flats)
+    if len(flats) > 1 and not likely:
+        return []  # a misread bar could pass for a slanting one, seen from far away
     variance = (POINTING_DOF + of_marks) / (POINTING_DOF + max(count - rich, 0))
     data = count + POINTING_DOF
     if square.chi2 / variance + _penalty(plain, data) <= best.chi2 / variance + _penalty(rich, data):
@@ -176,7 +181,7 @@ def _project(scene: Floats, flat: Flat, pose: Floats, centre_px: Floats) -> Floa
     steep = np.hypot(a, b)
     if steep > STEEPEST:  # no camera looks along the plane; keeps the steps of a fit in bounds
         a, b = a * STEEPEST / steep, b * STEEPEST / steep
-    distance = np.exp(log_distance)
+    distance = np.exp(np.clip(log_distance, *DISTANCES))
     c, r = np.sqrt(1 - a * a - b * b), np.sqrt(1 - b * b)
     e1, e2 = np.array([c, 0.0, -a]) / r, np.array([-a * b / r, r, -b * c / r])
     turn, shift_x, shift_y = pose

@@ -12,6 +12,7 @@ from dataclasses import dataclass, replace
 import numpy as np
 
 from layout import __version__
+from layout.agreement import compare_faces
 from layout.candidates.ranking import Ranked, rank
 from layout.candidates.width import Proposal, Space
 from layout.clearance import Clearance, find_widest, learn_clearance
@@ -74,6 +75,7 @@ def measure(
         steps = [np.random.default_rng([seed, step, index]) for step in (SCALE, LINES, PITCH, EXTENT)]
         views.append(measure_view(record, view, draws, steps, lenses or {}))
         notices += _placed(views[-1].notices, index)
+    notices += compare_faces(views)
     main = _main_view(views)
     whole, note = reconstruct(record, views[main], draws, np.random.default_rng([seed, OUTLINE, main]))
     notices += note

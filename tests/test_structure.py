@@ -13,7 +13,7 @@ HOME = Path(layout.__file__).parent
 ORDER = (
     "errors quantity notices files least_squares homography lens image record sexagesimal signs frame sources scene "
     "aslant scale straighten wobble rulings outline lengths sign_widths clearance candidates.width candidates.ranking "
-    "results candidates.deciding views rectify whole pipeline console sheet demo cli_pictures cli __main__"
+    "results candidates.deciding views agreement rectify whole pipeline console sheet demo cli_pictures cli __main__"
 ).split()
 
 

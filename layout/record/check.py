@@ -9,8 +9,9 @@ from pathlib import Path
 
 import numpy as np
 
-from layout.errors import Fault, PhotographError
+from layout.errors import CallError, Fault, PhotographError
 from layout.image.photograph import probe, sha256_of
+from layout.lens import read_lens
 from layout.notices import Missing
 from layout.record.crossings import find_crossings, mend_outlines, pieces_of
 from layout.record.model import Edge, Photograph, Record, Ruling, View
@@ -77,6 +78,7 @@ def check(record: Record, folder: str | Path) -> Check:
             missing.append(Missing(result, f"needs {'; and '.join(needs)}"))
         else:
             sound.append(f"{result}: can be measured")
+    faults += _lens_faults(record, Path(folder))
     faults += _outline_faults(record)
     return Check(tuple(sound), tuple(faults), tuple(missing))
 
@@ -98,6 +100,17 @@ def _photograph_faults(photograph: Photograph, place: str, folder: Path) -> Iter
     elif sha256 != photograph.sha256:
         text = f"{path.name} has changed since it was traced: its SHA-256 is {sha256}; put the old one back"
         yield Fault(f"{place}.sha256", text)
+
+
+def _lens_faults(record: Record, folder: Path) -> Iterator[Fault]:
+    """Say where a lens file cannot be read or belongs to other photographs."""
+    for number, view in enumerate(record.views):
+        if view.scale.lens is None:
+            continue
+        try:
+            read_lens(folder / view.scale.lens).for_size(record.photograph_of(view).size)
+        except CallError as error:
+            yield Fault(f"views[{number}].scale.lens", f"{view.scale.lens}: {error.message}")
 
 
 def _has_scale(view: View) -> bool:
