@@ -68,7 +68,12 @@ def luminance(pixels: Pixels) -> Brightness:
     Light is blurred by lens and sensor before it is encoded: an edge stands where the linear brightness is
     half way, not the encoded one.
     """
-    return np.asarray(_decoding(int(np.iinfo(pixels.dtype).max))[pixels] @ LUMINANCE, np.float32)
+    import cv2
+
+    table = _decoding(int(np.iinfo(pixels.dtype).max))
+    # OpenCV looks bytes up several times faster
+    linear = cv2.LUT(pixels, table) if pixels.dtype == np.uint8 and pixels.size else table[pixels]
+    return np.asarray(cv2.transform(linear, LUMINANCE[None]), np.float32).reshape(pixels.shape[:2])
 
 
 @cache

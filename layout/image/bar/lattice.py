@@ -19,6 +19,7 @@ ROBUST_TIMES = 4.0
 """What lies further off than so many standard deviations has no weight (Tukey's biweight)."""
 LEAST_FOR_PERSPECTIVE = 6
 ENOUGH_PX = 1e-3
+MOST_ROUNDS = 25
 
 
 @dataclass(frozen=True, eq=False)
@@ -57,7 +58,9 @@ class Numbered:
     taken: np.ndarray
 
 
-def number_features(places: Floats, signs: Floats, period: float) -> Numbered | None:
+def number_features(
+    places: Floats, signs: Floats, period: float, known: Lattice | None = None
+) -> Numbered | None:
     """Find the divisions among features.
 
     A seed of neighbours grows to both sides; what was taken decides where the next is looked for.
@@ -70,16 +73,22 @@ def number_features(places: Floats, signs: Floats, period: float) -> Numbered | 
         For edges: 1 where brightness rises, -1 where it falls; rises and falls alternate. For lines: zeros.
     period
         The pitch about the seed, roughly.
+    known
+        Where divisions were found on a line nearby, in place of a seed.
     """
-    seed = find_seed(places, signs, period)
-    if seed is None:
+    if len(places) < 3:
         return None
-    number, taken = seed
-    reach = 4.3 * period
-    middle = float(places[taken].mean())
-    lattice = fit_lattice(number[taken], places[taken], signs[taken], perspective=False)
+    reach, middle = np.inf, 0.0
+    lattice = known
+    if lattice is None:
+        seed = find_seed(places, signs, period)
+        if seed is None:
+            return None
+        number, taken = seed
+        reach, middle = 4.3 * period, float(places[taken].mean())
+        lattice = fit_lattice(number[taken], places[taken], signs[taken], perspective=False)
     furthest = float(np.abs(places - middle).max())
-    while True:
+    for _ in range(MOST_ROUNDS):
         within = np.abs(places - middle) <= reach
         number, taken = _assign(lattice, places, signs, within)
         if taken.sum() < 3:
@@ -87,9 +96,8 @@ def number_features(places: Floats, signs: Floats, period: float) -> Numbered | 
         before, lattice = lattice, fit_lattice(number[taken], places[taken], signs[taken])
         if reach > furthest and abs(before.b - lattice.b) < 1e-3 * lattice.b:
             return Numbered(lattice, number, taken)
-        reach *= 1.7
-        if reach > 1e3 * furthest:
-            return None
+        reach *= 1.8
+    return None
 
 
 def find_seed(places: Floats, signs: Floats, period: float) -> tuple[np.ndarray, np.ndarray] | None:

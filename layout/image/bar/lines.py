@@ -21,6 +21,7 @@ from layout.image.bar.trial import LEAST, Trial, judge
 from layout.image.photograph import Pixels
 from layout.quantity import Floats
 
+NEARLY = 0.9
 REACH = 6.0
 """How far across ticks are followed, in pitches."""
 
@@ -28,18 +29,21 @@ REACH = 6.0
 def try_ticks(pixels: Pixels, guide: Guide, period: float) -> Trial | None:
     """Measure ticks; where they run askew to the line, on a better line once or twice more."""
     looks: tuple[float, float] | None = None
+    known: Lattice | None = None
     for last in (False, False, True):
         ribbon = cut_rows(pixels, guide, 0.7 * period + 4, REACH * period)
         row = (ribbon.v[1] - ribbon.v[0]) * 1.1
         profile = mean_profile(ribbon, -row, row)
         looks = _looks_of_lines(ribbon, profile, period) if looks is None else looks
-        numbered = None if looks is None else _number_lines(ribbon, profile, period, looks)
+        numbered = None if looks is None else _number_lines(ribbon, profile, period, looks, known)
         if looks is None or numbered is None:
             return None
         (width, sign), lattice = looks, numbered.lattice
         number = numbers_between(lattice, guide)
         if len(number) < LEAST["ticks"]:
             return None
+        # on the better line the same lattice holds, if it was nearly whole
+        known = lattice if numbered.taken.sum() > NEARLY * len(number) else None
         filters = line_filters(width, ribbon.u[1] - ribbon.u[0])
         sought = number, np.full(len(number), sign)
         lean = look_at(ribbon, lattice, sought, (-0.8 * period, 0.8 * period), filters[::-1]).lean
@@ -70,11 +74,11 @@ def _looks_of_lines(ribbon: Ribbon, profile: Floats, period: float) -> tuple[flo
 
 
 def _number_lines(
-    ribbon: Ribbon, profile: Floats, period: float, looks: tuple[float, float]
+    ribbon: Ribbon, profile: Floats, period: float, looks: tuple[float, float], known: Lattice | None
 ) -> Numbered | None:
     """Find which line of one width and sign in a profile is which division."""
     places = _lines(ribbon, profile, looks)
-    numbered = number_features(places, np.zeros(len(places)), period)
+    numbered = number_features(places, np.zeros(len(places)), period, known)
     return None if numbered is None or numbered.taken.sum() < LEAST["ticks"] else numbered
 
 

@@ -20,7 +20,7 @@ TURN_DEG = 3.6
 """How far the line may be off: a little more than what is asked of the person who points."""
 REACH = 0.25
 """How far from the line it is looked for, in lengths of the line."""
-COLUMNS, COARSE_COLUMNS, ROWS, TURNS, LAGS = 1536, 128, 53, 9, 240
+COLUMNS, COARSE_COLUMNS, ROWS, TURNS, LAGS = 1536, 128, 53, 9, 160
 PIECES = 8
 LEAST_PERIOD_PX = 3.3
 LEAST_SCORE = 0.3
