@@ -67,7 +67,9 @@ def _explained(number: np.ndarray, lengths: Floats, periods: tuple[int, ...], to
     # the shorter classes are told apart: hardly one is as long as the next; the longest may run out of sight
     apart = pairwise(classes[: max(2, len(periods) - 1)])
     usual = [float(np.median(one)) for one in classes]
-    if usual != sorted(usual) or any(np.mean(one >= np.median(longer)) > MOST_AS_LONG for one, longer in apart):
+    if usual != sorted(usual) or any(
+        np.mean(one >= np.median(longer)) > MOST_AS_LONG for one, longer in apart
+    ):
         return 0.0
     rest = sum(float(np.abs(members - np.median(members)).sum()) for members in classes)
     return 1 - (rest / total) * (len(lengths) - 1) / max(len(lengths) - len(classes), 1)

@@ -58,10 +58,10 @@ def _fine(ribbon: Ribbon, turns: Floats) -> tuple[Floats, Floats]:
     rows, columns = ribbon.brightness.shape
     width = columns // PIECES
     pieces = ribbon.brightness[:, : width * PIECES].reshape(rows, PIECES, width)
-    lags, agreement = _agreement(pieces, ribbon.u[1] - ribbon.u[0], 0.55)
+    lags, alike = agreement(pieces, ribbon.u[1] - ribbon.u[0], 0.55)
     middles = ribbon.u[width // 2 :: width][:PIECES]
     shifted = [
-        np.mean([agreement[_rows_at(ribbon, turn, at), k] for k, at in enumerate(middles)], axis=0)
+        np.mean([alike[_rows_at(ribbon, turn, at), k] for k, at in enumerate(middles)], axis=0)
         for turn in turns
     ]
     return np.array(shifted), lags
@@ -77,8 +77,8 @@ def _coarse(ribbon: Ribbon, turns: Floats) -> tuple[Floats, Floats]:
     step = (ribbon.u[-1] - ribbon.u[0] + ribbon.u[1] - ribbon.u[0]) / width
     at = (np.arange(width) - (width - 1) / 2) * step
     sheared = np.stack([small[_rows_at(ribbon, turn, at), np.arange(width)[None]] for turn in turns])
-    lags, agreement = _agreement(sheared, step, 0.75)
-    return agreement, lags
+    lags, alike = agreement(sheared, step, 0.75)
+    return alike, lags
 
 
 def _rows_at(ribbon: Ribbon, turn: float, at: Floats | float) -> NDArray[np.int_]:
@@ -90,8 +90,21 @@ def _rows_at(ribbon: Ribbon, turn: float, at: Floats | float) -> NDArray[np.int_
     return np.asarray(np.clip(turned, 0, rows - 1))
 
 
-def _agreement(signals: np.ndarray, step: float, longest: float) -> tuple[Floats, Floats]:
-    """Return lags in px and, for each, how much better signals agree after whole periods than after halves."""
+def agreement(signals: NDArray[np.float32], step: float, longest: float) -> tuple[Floats, Floats]:
+    """Say how much better signals agree with themselves after whole periods than after halves.
+
+    Parameters
+    ----------
+    signals
+        Shape (..., N), ``step`` px from one sample to the next.
+    longest
+        The longest period, as a share of their length.
+
+    Returns
+    -------
+    tuple
+        Periods in px, (P,), and the agreement, (..., P), at most 2.
+    """
     width = signals.shape[-1]
     ramp = np.linspace(-1, 1, width, dtype=np.float32)
     level = signals - signals.mean(axis=-1, keepdims=True)
