@@ -73,7 +73,7 @@ def _coarse(ribbon: Ribbon, turns: Floats) -> tuple[Floats, Floats]:
 
     rows, columns = ribbon.brightness.shape
     width = min(COARSE_COLUMNS, columns)
-    small = cv2.resize(ribbon.brightness, (width, rows), interpolation=cv2.INTER_AREA)
+    small = np.asarray(cv2.resize(ribbon.brightness, (width, rows), interpolation=cv2.INTER_AREA), np.float32)
     step = (ribbon.u[-1] - ribbon.u[0] + ribbon.u[1] - ribbon.u[0]) / width
     at = (np.arange(width) - (width - 1) / 2) * step
     sheared = np.stack([small[_rows_at(ribbon, turn, at), np.arange(width)[None]] for turn in turns])

@@ -1,0 +1,1 @@
+"""Where a thing ends on a plain ground."""
