@@ -10,7 +10,11 @@ from typing import TYPE_CHECKING
 
 if TYPE_CHECKING:
     from layout.errors import CallError, LayoutError, PhotographError, RecordError
+    from layout.image.contour import find_contour
+    from layout.image.faces import find_faces, match_silhouettes
+    from layout.image.grooves import draw_to_groove
     from layout.image.photograph import read_photograph
+    from layout.image.ruled import propose_rulings
     from layout.image.target import find_card
     from layout.image.ticks import find_divisions
     from layout.lens import read_lens, read_lenses
@@ -32,10 +36,15 @@ __all__ = [
     "RecordError",
     "Results",
     "check",
+    "draw_to_groove",
     "find_card",
+    "find_contour",
     "find_divisions",
+    "find_faces",
+    "match_silhouettes",
     "measure",
     "parse",
+    "propose_rulings",
     "read",
     "read_lens",
     "read_lenses",
@@ -52,10 +61,15 @@ _HOMES = {
     "RecordError": "layout.errors",
     "Results": "layout.results",
     "check": "layout.record.check",
+    "draw_to_groove": "layout.image.grooves",
     "find_card": "layout.image.target",
+    "find_contour": "layout.image.contour",
     "find_divisions": "layout.image.ticks",
+    "find_faces": "layout.image.faces",
+    "match_silhouettes": "layout.image.faces",
     "measure": "layout.pipeline",
     "parse": "layout.record.files",
+    "propose_rulings": "layout.image.ruled",
     "read": "layout.record.files",
     "read_lens": "layout.lens",
     "read_lenses": "layout.lens",

@@ -23,7 +23,7 @@ def test_every_command_is_in_the_readme_and_none_other(tmp_path: Path) -> None:
 
 def test_the_example_runs(tmp_path: Path) -> None:
     assert run("demo", cwd=tmp_path).code == 0
-    code = re.findall(r"```python\n(.*?)```", README, re.DOTALL)[0]
+    code = "".join(re.findall(r"```python\n(.*?)```", README, re.DOTALL))
     done = subprocess.run(
         [sys.executable, "-c", code],
         cwd=tmp_path,
@@ -33,6 +33,7 @@ def test_the_example_runs(tmp_path: Path) -> None:
         check=True,
     )
     assert "sign widths" in done.stdout
+    assert "51 divisions; 4 pieces of contour" in done.stdout
 
 
 def test_ci_runs_the_readme_s_test_command() -> None:

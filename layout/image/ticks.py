@@ -101,12 +101,15 @@ def find_divisions(
     line = Guide.between(*points)
     trials: list[Trial] = []
     inches = False
-    for found in find_regular(pixels, line):
-        if any(_explains(trial, found, line) or _settles(trial, found, line, step) for trial in trials):
-            continue
-        trial = _try(pixels, line, found)
-        if trial is not None:
-            trials.append(trial)
+    for regular in find_regular(pixels, line):
+        for found in regular:
+            if any(_explains(one, found, line) or _outdoes(one, found, line, step) for one in trials):
+                continue
+            trial = _try(pixels, line, found)
+            if trial is not None:
+                trials.append(trial)
+        if any(_settles(one, line, step) for one in trials):
+            break
     trials = [one for one in trials if not any(_is_coarser(one, other) for other in trials)]
     read: list[Trial] = []
     for trial in trials:
@@ -184,11 +187,16 @@ def _explains(trial: Trial, found: Found, line: Guide) -> bool:
     )
 
 
-def _settles(trial: Trial, found: Found, line: Guide, step: float) -> bool:
+def _settles(trial: Trial, line: Guide, step: float) -> bool:
     """Say whether a trial is so good, and so near to the line, that only something finer could be better."""
     near = _beside(trial, line) * step / trial.pitch < 1.0
-    whole = trial.there.sum() >= 2 * LEAST[trial.kind] and trial.there.mean() > 0.85
-    return bool(near and whole and (found.period > 0.7 * trial.pitch or found.score < FINER_SCORE))
+    return bool(near and trial.there.sum() >= 2 * LEAST[trial.kind] and trial.there.mean() > 0.85)
+
+
+def _outdoes(trial: Trial, found: Found, line: Guide, step: float) -> bool:
+    """Say whether a trial leaves nothing to be hoped from a find."""
+    finer = found.period < 0.7 * trial.pitch and found.score > FINER_SCORE
+    return not finer and _settles(trial, line, step)
 
 
 def _is_coarser(trial: Trial, other: Trial) -> bool:

@@ -22,6 +22,9 @@ from layout.image.photograph import Pixels
 from layout.quantity import Floats
 
 NEARLY = 0.9
+TURNS = 4
+ENOUGH_PX = 18.0
+"""A pitch of so many columns shows how ticks run."""
 REACH = 6.0
 """How far across ticks are followed, in pitches."""
 
@@ -30,8 +33,11 @@ def try_ticks(pixels: Pixels, guide: Guide, period: float) -> Trial | None:
     """Measure ticks; where they run askew to the line, on a better line once or twice more."""
     looks: tuple[float, float] | None = None
     known: Lattice | None = None
-    for last in (False, False, True):
-        ribbon = cut_rows(pixels, guide, 0.7 * period + 4, REACH * period)
+    merged = max(1, int(period / ENOUGH_PX))
+    for turn in range(TURNS):
+        # the line is found on a coarser ribbon, the divisions are measured at the photograph's own resolution
+        last = turn == TURNS - 1
+        ribbon = cut_rows(pixels, guide, 0.7 * period + 4, REACH * period, merged=1 if last else merged)
         row = (ribbon.v[1] - ribbon.v[0]) * 1.1
         profile = mean_profile(ribbon, -row, row)
         looks = _looks_of_lines(ribbon, profile, period) if looks is None else looks
@@ -52,6 +58,9 @@ def try_ticks(pixels: Pixels, guide: Guide, period: float) -> Trial | None:
         if band is None:
             return None
         better = better_line(guide, heights, ribbon, lattice.at(number), 1.5 * period)
+        if better is None and merged > 1 and not last:
+            merged = 1
+            continue
         if last or better is None:
             seen = agree(look_at(ribbon, lattice, sought, band, filters[::-1]))
             return judge("ticks", guide, seen, band, _lengths(heights, ribbon, band))

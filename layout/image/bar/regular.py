@@ -7,6 +7,7 @@ many periods fit, the ribbon is cut along the line, so that a period that grows 
 
 from __future__ import annotations
 
+from collections.abc import Iterator
 from dataclasses import dataclass
 
 import numpy as np
@@ -39,17 +40,24 @@ class Found:
     score: float
 
 
-def find_regular(pixels: Pixels, guide: Guide, most: int = 5) -> list[Found]:
-    """Return what regular things run beside a line, each once: the finest of the best first."""
+def find_regular(pixels: Pixels, guide: Guide, most: int = 5) -> Iterator[list[Found]]:
+    """Yield what regular things run beside a line: first those of many periods, then those of few.
+
+    Each is named once, in an order in which it should be tried: the finest of the best first, since the longer ticks
+    among others are regular as well.
+    """
     length = 2 * guide.half
     reach = REACH * length + 4.0
     rows = int(min(ROWS, 2 * reach + 1))
     ribbon = cut_ribbon(pixels, guide, (guide.half, reach), (rows, int(min(COLUMNS, length))))
     turns = np.radians(np.linspace(-TURN_DEG, TURN_DEG, TURNS))
-    found = _search(_fine(ribbon, turns), ribbon, turns, most)
-    found += _search(_coarse(ribbon, turns), ribbon, turns, most)
+    for seen in (_fine, _coarse):
+        yield _in_order(_search(seen(ribbon, turns), ribbon, turns, most))
+
+
+def _in_order(found: list[Found]) -> list[Found]:
+    """Return the finest of the best first, then the others."""
     best = max((one.score for one in found), default=0.0)
-    # of what is about as regular the finest first: the longer ticks among others are regular as well
     return sorted(found, key=lambda one: (one.score < 0.6 * best, one.period))
 
 

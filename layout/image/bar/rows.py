@@ -86,12 +86,12 @@ class Seen:
 
 
 def cut_rows(
-    pixels: Pixels, guide: Guide, beyond: float, half_height: float, most: int = MOST_ROWS
+    pixels: Pixels, guide: Guide, beyond: float, half_height: float, most: int = MOST_ROWS, merged: int = 1
 ) -> Ribbon:
-    """Cut a ribbon at the photograph's own resolution along the line."""
+    """Cut a ribbon along the line: at the photograph's own resolution, or so many pixels merged to one column."""
     rows = int(np.clip(2 * half_height + 1, 5, most)) | 1
     reach = guide.half + beyond
-    size = (rows, int(2 * reach) + 1)
+    size = (rows, int(2 * reach) // merged + 1)
     return cut_ribbon(pixels, guide, (reach, half_height), size, cubic=half_height < FINE_REACH)
 
 
