@@ -9,9 +9,9 @@ import pytest
 from numpy.typing import NDArray
 
 from layout.errors import CallError
+from layout.image.groove.strip import lay_strip
 from layout.image.grooves import draw_to_groove
 from layout.image.photograph import Pixels
-from layout.image.strip import lay_strip
 from tests.pictures.clay import SECTIONS, Lamp, Points, Ruling, Section, Wedge, hand_drawn, photograph
 
 LENGTH = 700

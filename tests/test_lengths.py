@@ -20,7 +20,8 @@ def mapped(tilt: float = 0.0, turn: float = 0.0) -> Mapped:
     plane = Plane(find_homography(0.05 * ONE, tilts, ONE / 600, 0 * ONE), 0.05)
     centred = plane.seen_from(np.array([[1.0, 0.0, -CENTRE[0]], [0.0, 1.0, -CENTRE[1]], [0.0, 0.0, 1.0]]))
     return Mapped.of(
-        Scale(CENTRE, 0.05 * ONE, centred, centred, "similarity", np.eye(3)), Frame(CENTRE, np.array([8.0, -5.0]), turn)
+        Scale(CENTRE, 0.05 * ONE, centred, centred, "similarity", np.eye(3)),
+        Frame(CENTRE, np.array([8.0, -5.0]), turn),
     )
 
 

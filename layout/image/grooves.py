@@ -13,13 +13,12 @@ import numpy as np
 from numpy.lib.stride_tricks import sliding_window_view
 
 from layout.errors import CallError
-from layout.image.course import Course, contrast_of, find_course
-from layout.image.first_guess import AXIS, Start, guess_both, guess_one
-from layout.image.hollow import Hollow, fit_hollow
-from layout.image.photograph import Pixels
-from layout.image.section import Beside
-from layout.image.smoothing import SmoothLine
-from layout.image.stations import (
+from layout.image.groove.course import Course, contrast_of, find_course
+from layout.image.groove.first_guess import AXIS, Start, guess_both, guess_one
+from layout.image.groove.hollow import Hollow, fit_hollow
+from layout.image.groove.section import Beside
+from layout.image.groove.smoothing import SmoothLine
+from layout.image.groove.stations import (
     Stations,
     against_face,
     fit_stations,
@@ -27,7 +26,8 @@ from layout.image.stations import (
     mean_profile,
     weights_of,
 )
-from layout.image.strip import Strip, lay_strip
+from layout.image.groove.strip import Strip, lay_strip
+from layout.image.photograph import Pixels
 from layout.quantity import Floats
 
 Kind = Literal["single", "double"]

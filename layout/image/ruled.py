@@ -14,7 +14,7 @@ from numpy.lib.stride_tricks import sliding_window_view
 from numpy.typing import NDArray
 
 from layout.errors import CallError
-from layout.image.course import trace_courses
+from layout.image.groove.course import trace_courses
 from layout.image.grooves import find_groove
 from layout.image.photograph import Pixels
 from layout.image.sampling import Brightness

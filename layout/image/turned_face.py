@@ -7,7 +7,7 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
-from layout.image.course import evidence_of
+from layout.image.groove.course import evidence_of
 from layout.image.photograph import Pixels
 from layout.image.sampling import Brightness, luminance
 from layout.quantity import Floats

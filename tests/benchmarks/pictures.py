@@ -32,7 +32,9 @@ def main() -> None:
     view = record.views[0]
     small = layout.read_photograph(SAMPLE.parent / record.photographs[0].file)
     larger = float(np.sqrt(wanted.megapixels * 1e6 / small[..., 0].size))
-    pixels = np.asarray(cv2.resize(small, None, fx=larger, fy=larger, interpolation=cv2.INTER_CUBIC), np.uint8)
+    pixels = np.asarray(
+        cv2.resize(small, None, fx=larger, fy=larger, interpolation=cv2.INTER_CUBIC), np.uint8
+    )
     encoded = cv2.imencode(".jpg", pixels, [cv2.IMWRITE_JPEG_QUALITY, 92])[1]
     marks = np.array([mark.at for mark in view.scale.marks]) * larger
     start, end = marks[0] + BESIDE_PX * larger, marks[-1] + BESIDE_PX * larger
@@ -48,7 +50,9 @@ def main() -> None:
         for name, action in actions.items():
             times[name].append(seconds(action))
     decoding = statistics.median(times.pop("decoding"))
-    print(f"{pixels[..., 0].size / 1e6:.0f} megapixels, {len(encoded) / 1e6:.0f} MB: decoding {decoding:.3f} s")
+    print(
+        f"{pixels[..., 0].size / 1e6:.0f} megapixels, {len(encoded) / 1e6:.0f} MB: decoding {decoding:.3f} s"
+    )
     for name, taken in times.items():
         median = statistics.median(taken)
         print(f"{name}: {1000 * median:.0f} ms, 1/{decoding / median:.0f} of it")

@@ -7,11 +7,11 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.lib.stride_tricks import sliding_window_view
 
-from layout.image.course import unlevelled
-from layout.image.hollow import Hollow
+from layout.image.groove.course import unlevelled
+from layout.image.groove.hollow import Hollow
+from layout.image.groove.smoothing import SmoothLine, smooth_line
+from layout.image.groove.strip import Strip
 from layout.image.sampling import Brightness
-from layout.image.smoothing import SmoothLine, smooth_line
-from layout.image.strip import Strip
 from layout.quantity import Floats
 
 ROUNDS = 3

@@ -11,8 +11,8 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
-from layout.image.first_guess import Start
-from layout.image.section import (
+from layout.image.groove.first_guess import Start
+from layout.image.groove.section import (
     CENTRE,
     LOG_HALF,
     LOG_SLOPE,

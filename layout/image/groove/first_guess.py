@@ -9,8 +9,8 @@ import numpy as np
 from numpy.lib.stride_tricks import sliding_window_view
 from numpy.typing import NDArray
 
-from layout.image.course import unlevelled
-from layout.image.section import (
+from layout.image.groove.course import unlevelled
+from layout.image.groove.section import (
     LOG_HALF,
     LOG_RAKING,
     LOG_SLOPE,
