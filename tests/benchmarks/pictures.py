@@ -18,6 +18,8 @@ from layout.image.ticks import find_divisions
 from tests.benchmarks.speed import seconds
 
 SAMPLE = Path(__file__).parents[2] / "sample_images" / "umbarrat-041.fragment.json"
+NOISE = 1.5
+"""Standard deviation of a pixel, of 255."""
 BESIDE_PX = 12.0
 """How far beside the divisions and the groove it is pointed, in pixels of the sample."""
 

@@ -11,6 +11,7 @@ from itertools import pairwise
 from typing import Literal
 
 import numpy as np
+from numpy.typing import NDArray
 
 from layout.quantity import Floats
 
@@ -24,6 +25,7 @@ PERIODS: dict[Unit, tuple[int, ...]] = {
 LEAST_EXPLAINED = 0.5
 MOST_AS_LONG = 0.2
 LEAST_TICKS = 11
+LIKELY = 3
 
 
 @dataclass(frozen=True)
@@ -34,7 +36,7 @@ class Hierarchy:
     first: int = 0
 
 
-def read_hierarchy(number: np.ndarray, lengths: Floats) -> Hierarchy:
+def read_hierarchy(number: NDArray[np.int_], lengths: Floats) -> Hierarchy:
     """Tell from the ticks' lengths, each (N,), what bar it is; the unit is unknown where they do not tell.
 
     Examples
@@ -50,14 +52,22 @@ def read_hierarchy(number: np.ndarray, lengths: Floats) -> Hierarchy:
         return Hierarchy("unknown")
     found: list[tuple[float, Hierarchy]] = []
     for unit, periods in PERIODS.items():
-        for first in range(min(periods[0], len(number))):
+        for first in _likely_firsts(number, lengths, periods[0]):
             share = _explained(number - first, lengths, periods, total)
             found.append((share, Hierarchy(unit, int(first))))
     best, hierarchy = max(found, key=lambda one: one[0])
     return hierarchy if best >= LEAST_EXPLAINED else Hierarchy("unknown")
 
 
-def _explained(number: np.ndarray, lengths: Floats, periods: tuple[int, ...], total: float) -> float:
+def _likely_firsts(number: NDArray[np.int_], lengths: Floats, period: int) -> list[int]:
+    """Return where the longest may stand: the few places of a period at which ticks are longest on average."""
+    place = number % period
+    count = np.bincount(place, minlength=period)
+    mean = np.bincount(place, weights=lengths, minlength=period) / np.maximum(count, 1)
+    return [int(first) for first in np.argsort(-mean)[:LIKELY] if count[first]]
+
+
+def _explained(number: NDArray[np.int_], lengths: Floats, periods: tuple[int, ...], total: float) -> float:
     """Return the share of the lengths' deviations that a pattern explains, less what as many free medians would."""
     level = np.zeros(len(number), int)
     for rank, period in enumerate(reversed(periods), start=1):
