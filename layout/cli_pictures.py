@@ -34,12 +34,16 @@ def ticks(
     step: Annotated[float | None, typer.Option(help="mm from one division to the next [1]")] = None,
     first: Annotated[float, typer.Option(help="what the division nearest to --from reads, mm")] = 0.0,
     bar: Annotated[str, typer.Option(help="the bar's name in the record")] = "a",
+    printed: Annotated[
+        str | None, typer.Option(metavar="W,H", help="the card's check lengths as measured, mm [100,60]")
+    ] = None,
     as_json: Annotated[bool, typer.Option("--json", help="print the marks as a record holds them")] = False,
 ) -> None:
     """Find the divisions of a bar between two rough points.
 
     Without points, the scale card that 'layout target' makes is looked for.
     """
+    from layout.image.card import CHECK_MM, HEIGHT
     from layout.image.photograph import read_photograph
     from layout.image.target import find_card
     from layout.image.ticks import find_divisions
@@ -47,12 +51,13 @@ def ticks(
     if (from_ is None) != (to is None):
         message = "needs both --from and --to, or neither to look for the scale card"
         raise CallError(message)
+    lengths = None if printed is None else _place(printed, "--printed")
     ends = None if from_ is None or to is None else (_place(from_, "--from"), _place(to, "--to"))
     with waiting("reading the photograph"):
         pixels = read_photograph(photograph)
         try:
             if ends is None:
-                corners = find_card(pixels)
+                corners = find_card(pixels, printed_mm=(CHECK_MM, HEIGHT) if lengths is None else lengths)
             else:
                 found = find_divisions(pixels, *ends, step=1.0 if step is None else step, first=first)
         except CallError as error:
@@ -72,11 +77,11 @@ def ticks(
 
 
 def _place(text: str, option: str) -> tuple[float, float]:
-    """Return a point that was typed as X,Y."""
+    """Return two numbers that were typed with a comma between them."""
     try:
         x, y = (float(part) for part in text.split(","))
     except ValueError:
-        message = f"{option}: needs X,Y in pixels, as in 512,3720.5; has {text!r}"
+        message = f"{option}: needs two numbers, as in 512,3720.5; has {text!r}"
         raise CallError(message) from None
     return x, y
 

@@ -71,7 +71,7 @@ def test_blocks_without_a_step_are_pointed_out(tmp_path: Path) -> None:
     [
         ((), "bar.png: shows no scale card; point at a bar with --from X,Y --to X,Y"),
         (("--from", "1,2"), "needs both --from and --to, or neither to look for the scale card"),
-        (("--from", "1,2", "--to", "here"), "--to: needs X,Y in pixels, as in 512,3720.5; has 'here'"),
+        (("--from", "1,2", "--to", "here"), "--to: needs two numbers, as in 512,3720.5; has 'here'"),
         (
             ("--from", "10,10", "--to", "200,12"),
             "bar.png: finds no regular divisions from (10, 10) to (200, 12)",
@@ -101,6 +101,9 @@ def test_a_printed_card_is_found_without_pointing(tmp_path: Path) -> None:
     marks = json.loads(done.out)
     assert len(marks) == 16
     assert all(mark["bar"] == "card" and len(mark["mm"]) == 2 for mark in marks)
+    # a printer that made 99 mm of 100 made everything smaller by as much
+    smaller = json.loads(run("ticks", "photo.png", "--printed", "99,60", "--json", cwd=tmp_path).out)
+    assert [one["mm"][0] for one in smaller] == pytest.approx([0.99 * one["mm"][0] for one in marks])
 
 
 def test_a_target_of_another_kind_is_refused(tmp_path: Path) -> None:
