@@ -193,7 +193,7 @@ def test_a_trace_needs_two_points() -> None:
         propose_rulings(face(0).pixels, [("vertical", np.array([[5.0, 5.0]]))], FACE)
 
 
-@pytest.mark.parametrize("size", [0.5, 5.0, 30.0, 5000.0])
+@pytest.mark.parametrize("size", [0.5, 5.0, 30.0, 900.0])
 def test_faces_may_be_tiny_or_reach_beyond_the_picture(size: float) -> None:
     square = np.array([[200.0, 150.0], [200 + size, 150.0], [200 + size, 150 + size], [200.0, 150 + size]])
     for each in propose_rulings(face(2).pixels, [face(2).trace("vertical", 1)], square):

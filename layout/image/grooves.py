@@ -42,7 +42,7 @@ REACH_PX: dict[str, int] = {"single": 106, "double": 146}
 """How far beside the place of a course to look for it, and for its section: grooves of 45 px have room."""
 FINE_PX = 27.0
 """What is wider is guessed from coarser profiles."""
-SAMPLES, SPAN = 80, 2.4
+SAMPLES, SPAN = 81, 2.4
 """Samples of a profile, and how many half widths it reaches from the centre."""
 UNEXPLAINED = 0.02
 """Share of the contrast that the library's sections do not explain."""

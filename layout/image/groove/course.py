@@ -22,11 +22,11 @@ REACH = 1.3
 SHORTEST = 6.0
 """A groove narrower than a sixth of its length is looked for."""
 
-STEPS = 64
+STEPS = 56
 MOVES = 3
 STIFFNESS = 3.0
 NEARNESS = 0.1
-CONTENDERS = 12
+CONTENDERS = 8
 
 
 @dataclass(frozen=True, eq=False)

@@ -61,24 +61,26 @@ def guess(
     beside
         A second groove like the first, ``apart_px`` in samples.
     """
-    parameters, contrasts = _library()
+    parameters, contrasts, entries = _library()
     windows = sliding_window_view(contrasts, len(AXIS), axis=1)
     found = []
     for mirrored in (False, True):
         turned = (profile[::-1], sd[::-1]) if mirrored else (profile, sd)
         rest, weight = np.asarray(turned[0] / turned[1], np.float32), (1 / turned[1]).astype(np.float32)
         level = _level_of(AXIS, turned[1]).astype(np.float32)
-        for half in HALVES:
+        for half, these in zip(HALVES, entries, strict=True):
             reach = int(min(1.3 * half + 2, FURTHEST))
             shifts = np.arange(-reach, reach + 1, max(1, round(0.12 * half)))
-            these = np.flatnonzero(np.isclose(parameters[:, LOG_HALF], np.log(half)))
+            centres = -shifts if mirrored else shifts
+            shifts = shifts[(centres >= between[0]) & (centres <= between[1])]
+            if not len(shifts):
+                continue
             shown = _placed(windows, these, shifts, mirrored_beside(beside, mirrored)) * weight
             cost = _misfit(shown.reshape(-1, len(AXIS)), rest, level)
             for at in np.argsort(cost)[:FEW]:
                 entry, shift = these[at // len(shifts)], float(shifts[at % len(shifts)])
                 centre = -shift if mirrored else shift
-                if between[0] <= centre <= between[1]:
-                    found.append(Start(parameters[entry], centre, float(half), mirrored, float(cost[at])))
+                found.append(Start(parameters[entry], centre, float(half), mirrored, float(cost[at])))
     return _distinct(found)
 
 
@@ -88,15 +90,17 @@ def _level_of(across: Floats, sd: Floats) -> Floats:
 
 
 @cache
-def _library() -> tuple[Floats, Single]:
-    """Return grooves under lamps (K, 11), and their contrasts (K, 241) at whole samples."""
+def _library() -> tuple[Floats, Single, tuple[NDArray[np.intp], ...]]:
+    """Return grooves under lamps (K, 11), their contrasts (K, 241) at whole samples, and which have each width."""
     grid = np.meshgrid(np.log(HALVES), np.log(SLOPES), np.log(RAKINGS), POWERS)
     parameters = np.tile([prior[0] for prior in PRIORS.values()][:OF_ONE], (grid[0].size, 1))
     for column, values in zip((LOG_HALF, LOG_SLOPE, LOG_RAKING, POWER), grid, strict=True):
         parameters[:, column] = values.ravel()
     fine = np.arange(-2 * WIDE - 0.375, 2 * WIDE + 0.5, 0.25)
-    contrasts = contrast_of_sections(parameters, fine, 1.0).reshape(len(parameters), -1, 4).mean(axis=2)
-    return parameters, contrasts
+    from_right = np.zeros(len(parameters), bool)
+    contrasts = contrast_of_sections(parameters, fine, 1.0, from_right)
+    entries = tuple(np.flatnonzero(np.isclose(parameters[:, LOG_HALF], np.log(half))) for half in HALVES)
+    return parameters, contrasts.reshape(len(parameters), -1, 4).mean(axis=2), entries
 
 
 def _placed(

@@ -20,7 +20,6 @@ from layout.image.groove.section import (
     PRIORS,
     Beside,
     contrast_of_sections,
-    mirrored_beside,
 )
 from layout.quantity import Floats
 
@@ -29,9 +28,11 @@ Sides = NDArray[np.bool_]
 MEAN, SD, LOW, HIGH = np.array(list(PRIORS.values())).T
 STEP = np.array([0.02, 0.02, 0.02, 0.02, 0.02, 0.03, 0.03, 0.01, 0.01, 0.03, 0.02, 0.02, 0.02])
 DAMPINGS = np.array([0.1, 1.0, 10.0, 100.0])
-STAGES = ((3, 6, 4.0), (4, 4, 1.0), (5, 3, 0.5), (6, 3, 0.0))
-"""Rounds of descent; how many solutions go on then, and by which share (and 50) they may be worse than the best."""
-LAST_STAGE = STAGES[3:]
+SCREENING = (("half", 3, 6, 4.0), ("half", 4, 4, 1.0), ("all", 5, 3, 0.5))
+"""By which samples and rounds of descent solutions are screened: how many go on, and by which share (and 50) they
+may be worse than the best."""
+LAST_ROUNDS, AGAIN_ROUNDS = 6, 3
+"""Rounds of descent of those that are left, and of a solution that is fitted again."""
 SETTLED = 0.2
 LENIENT, CAUTIOUS = 6.0, 3.0
 """Squared misfits are told apart so much less sharply, and variances so much enlarged: then errors are as large as
@@ -86,9 +87,10 @@ class Hollow:
         return Start(self.parameters[:OF_ONE], centre_px, self.half_px, self.mirrored, 0.0)
 
     def _seen(self, parameters: Floats, across_px: Floats) -> Floats:
-        beside = mirrored_beside(self.beside, self.mirrored)
-        seen = contrast_of_sections(parameters, across_px, self.scale_px, beside)
-        return np.asarray(seen[:, ::-1] if self.mirrored else seen, float)
+        mirrored = np.full(len(parameters), self.mirrored)
+        return np.asarray(
+            contrast_of_sections(parameters, across_px, self.scale_px, mirrored, self.beside), float
+        )
 
 
 def fit_hollow(
@@ -118,14 +120,14 @@ def fit_hollow(
         row[:OF_ONE] = start.parameters
         row[CENTRE] = start.centre / scale * (-1 if start.mirrored else 1)
         row[LOG_HALF] = np.log(start.half / scale)
-    problem = _Problem(
-        across_px, profile, _whitening(across_px, sd, scale, float(np.ptp(profile))), scale, beside
-    )
-    for rounds, most, worse in STAGES if len(starts) > 1 else LAST_STAGE:
-        values, cost, normal = problem.descend(values, mirrored, rounds)
+    fine = _problem(across_px, profile, sd, scale, beside)
+    coarse = _problem(across_px[::2], profile[::2], sd[::2], scale, beside)
+    for samples, rounds, most, worse in SCREENING if len(starts) > 1 else ():
+        values, cost, _ = (fine if samples == "all" else coarse).descend(values, mirrored, rounds)
         kept = _unlike(values, mirrored, cost, most, worse)
-        values, mirrored, cost, normal = values[kept], mirrored[kept], cost[kept], normal[kept]
-    return problem.summarise(values, mirrored, cost, normal)
+        values, mirrored = values[kept], mirrored[kept]
+    values, cost, normal = fine.descend(values, mirrored, LAST_ROUNDS if len(starts) > 1 else AGAIN_ROUNDS)
+    return fine.summarise(values, mirrored, cost, normal)
 
 
 def _unlike(values: Floats, mirrored: Sides, cost: Floats, most: int, worse: float) -> NDArray[np.intp]:
@@ -139,6 +141,14 @@ def _unlike(values: Floats, mirrored: Sides, cost: Floats, most: int, worse: flo
         if not met and cost[at] <= cost.min() * (1 + worse) + 50 and len(kept) < most:
             kept.append(int(at))
     return np.array(kept)
+
+
+def _problem(
+    across_px: Floats, profile: Floats, sd: Floats, scale_px: float, beside: Beside | None
+) -> _Problem:
+    """Return what is to be fitted."""
+    whitening = _whitening(across_px, sd, scale_px, float(np.ptp(profile)))
+    return _Problem(across_px, profile, whitening, scale_px, beside)
 
 
 def _whitening(across_px: Floats, sd: Floats, scale_px: float, contrast: float) -> Floats:
@@ -167,13 +177,7 @@ class _Problem:
     def residuals(self, values: Floats, mirrored: Sides) -> Floats:
         """Return what the light leaves unexplained, and what the priors do, shape (B, U + P)."""
         many = values.shape[1]
-        seen = np.empty((len(values), len(self.across_px)), np.float32)
-        for side in (False, True):
-            these = mirrored == side
-            if these.any():
-                beside = mirrored_beside(self.beside, side)
-                shown = contrast_of_sections(values[these], self.across_px, self.scale_px, beside)
-                seen[these] = shown[:, ::-1] if side else shown
+        seen = contrast_of_sections(values, self.across_px, self.scale_px, mirrored, self.beside)
         rest = (seen - self.profile) @ self.whitening
         return np.concatenate([rest, (values - MEAN[:many]) / SD[:many]], axis=1)
 

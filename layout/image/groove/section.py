@@ -24,9 +24,9 @@ PRIORS: dict[str, tuple[float, float, float, float]] = {
     "log_raking": (0.0, 0.9, float(np.log(0.08)), float(np.log(6.0))),
     # of the section 1 - |x|^power: 1 is a V, 2 a parabola
     "power": (1.5, 0.5, 1.0, 2.5),
-    # how soft rim and bottom are, in half widths
+    # how soft its rim and how blunt its bottom is, in half widths
     "log_rim": (float(np.log(0.15)), 0.6, float(np.log(0.04)), float(np.log(0.6))),
-    "log_bottom": (float(np.log(0.15)), 0.6, float(np.log(0.03)), float(np.log(0.6))),
+    "log_bottom": (float(np.log(0.12)), 0.6, float(np.log(0.03)), float(np.log(0.6))),
     # slope of the clay pushed up beside the groove, as a share of the flank's
     "lips": (0.08, 0.12, -0.05, 0.6),
     # share of the light that comes from all over, and how far depth hides it
@@ -67,9 +67,13 @@ def mirrored_beside(beside: Beside | None, mirrored: bool) -> Beside | None:
 
 
 def contrast_of_sections(
-    parameters: Floats, across_px: Floats, scale_px: float, beside: Beside | None = None
+    parameters: Floats,
+    across_px: Floats,
+    scale_px: float,
+    mirrored: NDArray[np.bool_],
+    beside: Beside | None = None,
 ) -> Single:
-    """Return the contrast against the level face, shape (B, U), of grooves whose lamp stands on the right.
+    """Return the contrast against the level face, shape (B, U), of grooves under a lamp.
 
     Lambert's law for the lamp, with the shadow that a rim casts; for the light from all over, how much of the sky
     the depth hides; a Gaussian blur.
@@ -79,9 +83,11 @@ def contrast_of_sections(
     parameters
         Shape (B, 11), in the order of ``PRIORS``; 13 with a second groove.
     across_px
-        Even axis across the groove, shape (U,).
+        Even axis across the groove, symmetric about 0, shape (U,).
     scale_px
         The length by which centre and half width are told.
+    mirrored
+        Whether the lamp stands on the left instead of the right, shape (B,); centres then count to the left.
     """
     axis = across_px.astype(np.float32)
     step = float(axis[1] - axis[0])
@@ -92,13 +98,16 @@ def contrast_of_sections(
     if beside is None:
         slope = _slope((axis - centre) / half, named)
     else:
-        apart = np.float32(beside.apart_px) + named["astray"] * half
+        side = np.where(mirrored, -1, 1)[:, None].astype(np.float32)
+        apart = side * np.float32(beside.apart_px) + named["astray"] * half
         ratio = np.exp(0.5 * named["log_ratio"])
         slope = _slope((axis - centre + np.float32(beside.shared) * apart) / half, named) / ratio
         slope += _slope((axis - centre - np.float32(1 - beside.shared) * apart) / half, named) * ratio
     height = (np.cumsum(slope, axis=1) - 0.5 * slope) * np.float32(step)
     height -= 0.5 * (height[:, :1] + height[:, -1:])
-    return _blurred(_lit(slope, height, axis, half, named), step, np.exp(named["log_blur"]))
+    seen = _blurred(_lit(slope, height, axis, half, named), step, np.exp(named["log_blur"]))
+    seen[mirrored] = seen[mirrored, ::-1]
+    return seen
 
 
 def _slope(x: Single, named: dict[str, Single]) -> Single:

@@ -60,11 +60,14 @@ def smooth_line(
     bending = bends.T @ bends
     kept, line = weights, np.full_like(values, np.median(values))
     freedom = scatter = 0.0
+    prices = PRICES
     for turn in TURNS:
         # where hardly anything is seen the bends run out into a straight line
         straight = _straight(along / length, values, kept)
         pulled = (kept * values + PULL * straight) / (kept + PULL)
-        line, freedom = _fit(basis, bending, pulled, kept + PULL, alike)
+        line, freedom, best = _fit(basis, bending * prices[:, None, None], pulled, kept + PULL, alike)
+        # later turns leave stations out, and change little else
+        prices = prices[max(best - 1, 0) : best + 2]
         rest = values - line
         scatter = 1.4826 * float(np.median(np.abs(rest[weights > 0]))) if (weights > 0).any() else 0.0
         kept = weights * (1 - np.clip(rest / (turn * (scatter + 1e-3)), -1, 1) ** 2) ** 2
@@ -88,16 +91,16 @@ def _straight(share: Floats, values: Floats, weights: Floats) -> Floats:
 
 def _fit(
     basis: Floats, bending: Floats, values: Floats, weights: Floats, alike: float
-) -> tuple[Floats, float]:
-    """Return the line at the price that predicts left-out stations best, and its degrees of freedom."""
+) -> tuple[Floats, float, int]:
+    """Return the line at the price that predicts left-out stations best, its degrees of freedom, and which it is."""
     normal = basis.T @ (weights[:, None] * basis)
-    priced = normal + PRICES[:, None, None] * bending + 1e-9 * np.eye(len(normal))
+    priced = normal + bending + 1e-9 * np.eye(len(normal))
     inverse = np.linalg.inv(priced)
     lines = inverse @ (basis.T @ (weights * values)) @ basis.T
     freedom = np.einsum("lij,ji->l", inverse, normal)
     rest = (weights * (values - lines) ** 2).sum(axis=1)
     best = int((rest / np.maximum(weights.sum() - 1.4 * alike * freedom, 1e-3) ** 2).argmin())
-    return lines[best], float(freedom[best])
+    return lines[best], float(freedom[best]), best
 
 
 def _alike(rest: Floats, kept: Floats) -> float:

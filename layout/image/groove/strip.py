@@ -11,7 +11,7 @@ from layout.image.photograph import Pixels
 from layout.image.sampling import Brightness, luminance
 from layout.quantity import Floats
 
-LEAST_STATIONS, MOST_STATIONS = 24, 128
+LEAST_STATIONS, MOST_STATIONS = 24, 112
 STATION_PX = 4.0
 READ_PX = 5
 """A station averages over so many pixels along the line, where stations stand that far apart."""
