@@ -69,6 +69,7 @@ WARNINGS: dict[str, str] = {
     "the draws were weighted by the exact one",
     "outline.break_outside": "the break lies outside every outline that fits the original edges: check which "
     "pieces are original edge and which are break",
+    "groove.unseen": "no groove is seen near the tracing, which is kept as it was drawn",
     "faces.disagree": "the fragment's {extent} is {first} on the {one} and {second} on the {other}, though it is one: "
     "on a plate put together from several pictures each face needs a scale of its own; check both scales and outlines",
     "scale.disagree": "the sources of scale contradict one another ({sources}): their errors were enlarged "

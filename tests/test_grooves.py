@@ -207,6 +207,7 @@ def test_a_groove_out_of_reach_is_left_alone() -> None:
     trace = line[20:-20:100] + np.array([0, 30])
     groove = draw_to_groove(pixels, trace, within_px=8)
     assert not groove.found
+    assert [one.code for one in groove.caveats] == ["groove.unseen"]
     assert np.array_equal(groove.points_px, trace)
 
 

@@ -28,6 +28,7 @@ from layout.image.groove.stations import (
 )
 from layout.image.groove.strip import Strip, lay_strip
 from layout.image.photograph import Pixels
+from layout.notices import Caveat, warn
 from layout.quantity import Floats
 
 Kind = Literal["single", "double"]
@@ -75,6 +76,11 @@ class Groove:
     scatter_px: float | None
     seen: float
     found: bool
+
+    @property
+    def caveats(self) -> tuple[Caveat, ...]:
+        """Return a warning where no groove is seen."""
+        return () if self.found else (warn("groove.unseen"),)
 
 
 def draw_to_groove(pixels: Pixels, trace_px: Floats, *, within_px: float, kind: Kind = "single") -> Groove:
