@@ -15,10 +15,10 @@ from typing import TYPE_CHECKING, Annotated
 import typer
 
 from layout import __version__
-from layout.cli_pictures import PhotoFiles, RecordFile, lens, rectify, target, ticks, write_whole
+from layout.cli_pictures import PhotoFiles, RecordFile, lens, rectify, target, ticks
 from layout.console import emit, printable, say, speak_utf8, waiting
 from layout.errors import CallError, LayoutError
-from layout.files import reason
+from layout.files import reason, write_whole
 
 if TYPE_CHECKING:
     from layout.record.model import Record

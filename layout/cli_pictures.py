@@ -10,7 +10,7 @@ import typer
 
 from layout.console import emit, say, waiting
 from layout.errors import CallError
-from layout.files import reason, replace_file
+from layout.files import write_whole
 
 if TYPE_CHECKING:
     from layout.image.target import FoundMark
@@ -219,12 +219,3 @@ def rectify(
         write_whole(file, to_tiff(rectified))
     height, width = rectified.pixels.shape[:2]
     say(f"{file}: written, {width} x {height} pixels at {per_mm:g} per mm")
-
-
-def write_whole(file: Path, data: bytes) -> None:
-    """Write a file whole or not at all."""
-    try:
-        replace_file(file, data)
-    except OSError as error:
-        message = f"cannot be written: {reason(error)}"
-        raise CallError(message, file=file) from None

@@ -7,6 +7,8 @@ import os
 import stat
 from pathlib import Path
 
+from layout.errors import CallError
+
 
 def replace_file(path: Path, data: bytes) -> None:
     """Write a temporary file beside the old one, sync it, and rename it over the old one.
@@ -33,6 +35,21 @@ def replace_file(path: Path, data: bytes) -> None:
             temporary.unlink()
         raise
     _sync_folder(path.parent)
+
+
+def write_whole(path: Path, data: bytes) -> None:
+    """Write a file whole or not at all, for whoever has nothing to add to why it failed.
+
+    Raises
+    ------
+    CallError
+        If it cannot be written; what was there before is then untouched.
+    """
+    try:
+        replace_file(path, data)
+    except (OSError, ValueError) as error:
+        message = f"cannot be written: {reason(error)}"
+        raise CallError(message, file=path) from None
 
 
 def reason(error: OSError | ValueError) -> str:

@@ -19,7 +19,7 @@ import numpy as np
 from pydantic import BaseModel, ConfigDict, Field, ValidationError
 
 from layout.errors import CallError
-from layout.files import reason, replace_file
+from layout.files import reason, write_whole
 from layout.quantity import Floats
 
 if TYPE_CHECKING:
@@ -159,12 +159,7 @@ def write_lens(lens: Lens, path: str | Path) -> None:
     CallError
         If it cannot be written; what was there before is then untouched.
     """
-    path = Path(path)
-    try:
-        replace_file(path, lens.to_json().encode())
-    except (OSError, ValueError) as error:
-        text = f"cannot be written: {reason(error)}"
-        raise CallError(text, file=path) from None
+    write_whole(Path(path), lens.to_json().encode())
 
 
 def distort(lens: Lens, points_px: Floats) -> Floats:

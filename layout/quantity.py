@@ -17,6 +17,7 @@ from numpy.typing import NDArray
 
 Floats = NDArray[np.float64]
 
+MM_PER_INCH = 25.4
 SIGNIFICANT = 6
 SHARES = (0.025, 0.5, 0.975)
 

@@ -12,14 +12,13 @@ from layout.frame import Plane, Scale, find_homography, shifted
 from layout.homography import inverse
 from layout.lens import Lens
 from layout.notices import Assumption, Caveat, Missing, Notice, assume
-from layout.quantity import Floats
+from layout.quantity import MM_PER_INCH, Floats
 from layout.scene import UNKNOWN, Scene, draw_scene, observed
 from layout.sources import Focal, Length, fit_bar, fit_known, flats_of, pointing_of
 
 if TYPE_CHECKING:
     from layout.record.model import Measured, Photograph, View
 
-MM_PER_INCH = 25.4
 ASSUMED_THICKNESS_MM = (25.0, 7.0)
 ASSUMED_DISTANCE_MM = 700.0
 ASSUMED_DISTANCE_LOG_SD = 0.4

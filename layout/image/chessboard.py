@@ -12,10 +12,10 @@ from pathlib import Path
 from typing import Any
 
 import numpy as np
-from numpy.typing import NDArray
 
 from layout.errors import CallError
 from layout.image.photograph import Pixels, read_photograph
+from layout.image.sampling import Grey, grey
 from layout.image.target import find_card
 from layout.lens import Lens, LensPicture, undistort
 from layout.quantity import Floats
@@ -33,8 +33,6 @@ SEARCH_PX = 1200
 SHORTEST = 3
 COMMON = (9, 6)
 USUAL = range(4, 13)
-
-Grey = NDArray[np.uint8]
 
 
 @dataclass(frozen=True, eq=False)
@@ -221,15 +219,15 @@ def find_chessboard(
     """
     import cv2
 
-    grey = _grey(pixels)
-    factor = min(1.0, SEARCH_PX / max(grey.shape))
-    small = np.asarray(cv2.resize(grey, None, fx=factor, fy=factor, interpolation=cv2.INTER_AREA), np.uint8)
+    whole = grey(pixels)
+    factor = min(1.0, SEARCH_PX / max(whole.shape))
+    small = np.asarray(cv2.resize(whole, None, fx=factor, fy=factor, interpolation=cv2.INTER_AREA), np.uint8)
     for columns, rows in boards:
         corners = _corners(small, columns, rows, thorough=thorough)
         if corners is not None:
             at = _refine(small, corners, columns)
             # pixel centres stand on whole numbers, in the small picture as in the large one
-            return Chessboard(columns, rows, _refine(grey, (at + 0.5) / factor - 0.5, columns))
+            return Chessboard(columns, rows, _refine(whole, (at + 0.5) / factor - 0.5, columns))
     return None
 
 
@@ -260,14 +258,6 @@ def _other_sizes() -> list[tuple[int, int]]:
     """Return the usual sizes but the most common: larger first, since a smaller one fits into a larger."""
     pairs = [(a, b) for b in USUAL for a in USUAL if b <= a <= b + 4 and (a, b) != COMMON]
     return sorted(pairs, key=lambda pair: -pair[0] * pair[1])
-
-
-def _grey(pixels: Pixels) -> Grey:
-    """Return a picture in grey, as encoded: a corner of a chessboard is a saddle in either."""
-    import cv2
-
-    eight: Any = pixels if pixels.dtype == np.uint8 else (pixels >> 8).astype(np.uint8)
-    return np.asarray(cv2.cvtColor(eight, cv2.COLOR_RGB2GRAY), np.uint8)
 
 
 def _card_view(name: str, pixels: Pixels) -> PatternView | None:

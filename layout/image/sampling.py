@@ -7,6 +7,7 @@ from __future__ import annotations
 
 from dataclasses import dataclass
 from functools import cache
+from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
@@ -15,6 +16,7 @@ from layout.image.photograph import Pixels
 from layout.quantity import Floats
 
 Brightness = NDArray[np.float32]
+Grey = NDArray[np.uint8]
 
 LUMINANCE = np.array([0.2126, 0.7152, 0.0722], np.float32)
 """Shares of linear red, green and blue in the luminance: Recommendation ITU-R BT.709."""
@@ -70,10 +72,26 @@ def luminance(pixels: Pixels) -> Brightness:
     """
     import cv2
 
+    shares = cv2.transform(linear_light(pixels), LUMINANCE[None])
+    return np.asarray(shares, np.float32).reshape(pixels.shape[:2])
+
+
+def linear_light(pixels: Pixels) -> Brightness:
+    """Return linear red, green and blue from 0 to 1, shape (height, width, 3), of pixels in sRGB."""
+    import cv2
+
     table = _decoding(int(np.iinfo(pixels.dtype).max))
     # OpenCV looks bytes up several times faster
-    linear = cv2.LUT(pixels, table) if pixels.dtype == np.uint8 and pixels.size else table[pixels]
-    return np.asarray(cv2.transform(linear, LUMINANCE[None]), np.float32).reshape(pixels.shape[:2])
+    fast = pixels.dtype == np.uint8 and pixels.size
+    return np.asarray(cv2.LUT(pixels, table) if fast else table[pixels], np.float32)
+
+
+def grey(pixels: Pixels) -> Grey:
+    """Return a picture in grey, 8 bits, as encoded: corners and markers are found in either brightness."""
+    import cv2
+
+    eight: Any = pixels if pixels.dtype == np.uint8 else (pixels >> 8).astype(np.uint8)
+    return np.asarray(cv2.cvtColor(eight, cv2.COLOR_RGB2GRAY), np.uint8)
 
 
 @cache

@@ -14,9 +14,10 @@ from typing import Any
 import numpy as np
 
 from layout.errors import CallError
+from layout.homography import apply
 from layout.image.card import CARD, CELLS, CHECK_MM, HEIGHT, marker_cells
 from layout.image.photograph import Pixels
-from layout.image.sampling import Crop, crop_around
+from layout.image.sampling import Crop, crop_around, grey
 from layout.quantity import Floats
 
 SEARCHES_PX = (2000, 6000)
@@ -131,9 +132,7 @@ def _reduced_grey(pixels: Pixels, factor: float) -> Any:  # noqa: ANN401 - OpenC
     small: Any = pixels
     if factor < 1:
         small = cv2.resize(pixels, None, fx=factor, fy=factor, interpolation=cv2.INTER_AREA)
-    if small.dtype != np.uint8:
-        small = (small >> 8).astype(np.uint8)
-    return cv2.cvtColor(small, cv2.COLOR_RGB2GRAY)
+    return grey(small)
 
 
 def _measure(pixels: Pixels, number: int, corners_px: Floats) -> tuple[Floats, Floats] | None:
@@ -157,7 +156,7 @@ def _measure(pixels: Pixels, number: int, corners_px: Floats) -> tuple[Floats, F
         to_px = to_px @ _small_map(shift)
     if scatter > LARGEST_SCATTER:
         return None
-    at = _apply(to_px, square)
+    at = apply(to_px, square)
     return at, np.array([_corner_sd(to_px, corner, covariance) for corner in square])
 
 
@@ -184,7 +183,7 @@ def _offsets(crop: Crop, to_px: Floats, edges: _Edges) -> tuple[Floats, Any]:
         + (ALONG - 0.5)[:, None, None] * along[:, None, None]
         + ACROSS[:, None] * edges.normals[:, None, None]
     )
-    at_px = _apply(to_px, places)
+    at_px = apply(to_px, places)
     profiles = crop.sample(at_px).mean(axis=1)
     black, white = profiles[:, :5].mean(axis=1), profiles[:, -5:].mean(axis=1)
     level = (profiles - black[:, None]) / np.maximum(white - black, 1e-9)[:, None] - 0.5
@@ -256,14 +255,8 @@ def _need_one_card(found: list[FoundMark]) -> None:
         return
     mm, px = (np.array([getattr(mark, name) for mark in found]) for name in ("mm", "at_px"))
     to_px, _ = cv2.findHomography(mm, px)
-    away = np.linalg.norm(_apply(np.asarray(to_px), mm) - px, axis=1)
+    away = np.linalg.norm(apply(np.asarray(to_px), mm) - px, axis=1)
     sides = np.linalg.norm(px[1::4] - px[::4], axis=1)
     if away.max() > OUT_OF_PLACE * sides.min():
         text = "shows markers of more than one scale card, or a bent one; keep one flat card in the picture"
         raise CallError(text)
-
-
-def _apply(matrix: Floats, points: Floats) -> Floats:
-    """Map points (..., 2) of a plane."""
-    mapped = points @ matrix[:, :2].T + matrix[:, 2]
-    return np.asarray(mapped[..., :2] / mapped[..., 2:])

@@ -19,12 +19,11 @@ from layout.image.bar.lines import try_ticks
 from layout.image.bar.regular import Found, find_regular
 from layout.image.bar.trial import LEAST, Kind, Trial
 from layout.image.photograph import Pixels
-from layout.quantity import Floats
+from layout.quantity import MM_PER_INCH, Floats
 
 BESIDE_MM = 2.5
 """How far the line may lie beside the divisions: what is asked of the person who points, and a little more."""
 LEAST_LENGTH_PX = 20.0
-MM_PER_INCH = 25.4
 FINER_SCORE = 0.9
 """How regular something finer must look to be tried after a good find."""
 

@@ -54,20 +54,21 @@ def begin(name: str, photographs: list[Path], folder: Path) -> Record:
                     "id": each,
                     "file": file.as_posix(),
                     "sha256": sha256_of(path),
-                    "size": probe(path),
-                    "focal_length": _focal_length(path),
+                    "size": size,
+                    "focal_length": _focal_length(path, size),
                 }
                 for each, file, path in zip(ids, files, photographs, strict=True)
+                for size in [probe(path)]
             ],
             "views": [{"face": "obverse", "photograph": ids[0]}],
         }
     )
 
 
-def _focal_length(photograph: Path) -> dict[str, float] | None:
+def _focal_length(photograph: Path, size: tuple[int, int]) -> dict[str, float] | None:
     """Return the focal length that the camera wrote into a photograph, as it is at the distance of a tablet."""
     camera = read_camera_data(photograph)
-    far = None if camera is None else focal_px(camera, probe(photograph))
+    far = None if camera is None else focal_px(camera, size)
     if far is None:
         return None
     px = far[0] * (1 + CLOSE[0])

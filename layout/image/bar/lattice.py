@@ -51,7 +51,7 @@ class Lattice:
 
 @dataclass(frozen=True, eq=False)
 class Numbered:
-    """A lattice and, for each feature, the division that it is; -1 in ``taken`` where it is none."""
+    """A lattice and, for each feature, the division that it is, where it is ``taken``."""
 
     lattice: Lattice
     number: np.ndarray

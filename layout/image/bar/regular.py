@@ -138,8 +138,8 @@ def agreement(signals: NDArray[np.float32], step: float, longest: float) -> tupl
 
 
 def _search(seen: tuple[Floats, Floats], ribbon: Ribbon, turns: Floats, most: int) -> list[Found]:
-    """Return the highest scores that are not neighbours of one another, each with its shortest period."""
-    score, lags = seen[0].copy(), seen[1]
+    """Return the highest scores that are not neighbours, each with its shortest period; ``seen`` is used up."""
+    score, lags = seen
     found: list[Found] = []
     near = max(1, round(len(ribbon.v) / 40))
     while len(found) < most and score.size:

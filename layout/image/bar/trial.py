@@ -49,7 +49,7 @@ class Trial:
     unlike
         By how much contrasts differ, as a share of the usual one.
     lengths
-        How far each tick reaches across, px; empty for blocks.
+        How far each tick reaches across, px; zeros for blocks.
     """
 
     kind: Kind

@@ -10,8 +10,8 @@ import numpy as np
 from numpy.typing import NDArray
 
 from layout.image.photograph import Pixels
-from layout.image.sampling import Brightness, Crop
-from layout.image.silhouette.ground import DAMPING, TINT_NOISE, channels_of, shrunk
+from layout.image.sampling import Brightness, Crop, linear_light
+from layout.image.silhouette.ground import DAMPING, TINT_NOISE, shrunk
 from layout.image.silhouette.ring import evenly, normals_of, running_median, smoothed
 from layout.quantity import Floats
 
@@ -225,7 +225,7 @@ def _profiles(picture: Pixels, ring: Floats, inwards: Floats, at: Floats) -> Bri
         points = ring[start : start + 200, None] + at[:, None] * inwards[start : start + 200, None]
         low = np.clip(np.floor(points.min(axis=(0, 1))), 0, [width - 1, height - 1]).astype(int)
         high = np.clip(np.ceil(points.max(axis=(0, 1))), 0, [width - 1, height - 1]).astype(int)
-        channels = channels_of(picture[low[1] : high[1] + 1, low[0] : high[0] + 1])
+        channels = linear_light(picture[low[1] : high[1] + 1, low[0] : high[0] + 1])
         found.append(np.stack([Crop(channels[..., c], low.astype(float)).sample(points) for c in range(3)]))
     return np.concatenate(found, axis=1)
 

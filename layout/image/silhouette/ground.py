@@ -10,7 +10,7 @@ from numpy.typing import NDArray
 
 from layout.errors import CallError
 from layout.image.photograph import Pixels
-from layout.image.sampling import Brightness, luminance
+from layout.image.sampling import Brightness, linear_light
 from layout.image.silhouette.ring import clockwise
 from layout.quantity import Floats
 
@@ -117,7 +117,7 @@ def part_ground(pixels: Pixels) -> Plate:
     cells = max(1, math.ceil(math.sqrt(height * width / COARSE_PIXELS)))
     size = (max(8, width // cells), max(8, height // cells))
     small = shrunk(pixels, size)
-    tones = _tones(channels_of(small))
+    tones = _tones(linear_light(small))
     # a step stands out from its surroundings, the slope of vignetting and of penumbrae does not
     steps = np.abs(tones - cv2.GaussianBlur(tones, (0, 0), 3.0))
     busy = np.maximum(np.maximum(steps[..., 0], steps[..., 1]), steps[..., 2])
@@ -165,11 +165,6 @@ def shrunk(pixels: Pixels, size: tuple[int, int]) -> Pixels:
         return pixels
     small: Pixels = cv2.resize(pixels, size, interpolation=cv2.INTER_AREA).astype(pixels.dtype)
     return small
-
-
-def channels_of(pixels: Pixels) -> Brightness:
-    """Return linear red, green and blue, shape (height, width, 3)."""
-    return np.stack([luminance(pixels[..., [c, c, c]]) for c in range(3)], axis=-1)
 
 
 def _tones(light: Brightness) -> Brightness:
