@@ -68,7 +68,7 @@ def _view(record: Record, number: int) -> Iterator[Fault]:
     view, place = record.views[number], f"views[{number}]"
     photograph = _photograph_of(record, view)
     if photograph is None:
-        known = ", ".join(each.id for each in record.photographs)
+        known = _listed(each.id for each in record.photographs)
         yield Fault(
             f"{place}.photograph", f"no photograph is called {shown(view.photograph)}; there are: {known}"
         )
@@ -98,6 +98,11 @@ def _points(view: View, photograph: Photograph, place: str) -> Iterator[Fault]:
         yield from _outside(_traced(view, place), view.region, region)
     # a bar, and a length that was measured on the object, may lie beside the region
     yield from _outside(_scale_points(view, place), whole, on_photograph)
+
+
+def _listed(names: Iterable[str]) -> str:
+    """List names as they are, but for those that no terminal should be sent."""
+    return ", ".join(name if name.isprintable() else shown(name) for name in names)
 
 
 def _photograph_of(record: Record, view: View) -> Photograph | None:
@@ -215,7 +220,7 @@ def _rulings(view: View, place: str) -> Iterator[Fault]:
     columns = [ruling.id for ruling in view.rulings if ruling.runs == "vertical"]
     for k, entry in enumerate(view.writing):
         if entry.column not in (None, TABLET_EDGE, *columns):
-            known = ", ".join([*columns, TABLET_EDGE])
+            known = _listed([*columns, TABLET_EDGE])
             text = f"no vertical ruling is called {shown(entry.column)}; there are: {known}"
             yield Fault(f"{place}.writing[{k}].column", text)
 
